@@ -1,0 +1,1 @@
+"""The flat linear circuit: elements, nodal equations, sparse solution over frequency."""

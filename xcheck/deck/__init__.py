@@ -1,0 +1,1 @@
+"""Deck text to cards: numbers, includes, logical lines. Knows nothing of amplifiers."""

@@ -1,0 +1,1 @@
+"""Cards to the flat circuit: parameters evaluated, subcircuits expanded."""

@@ -1,0 +1,20 @@
+"""The settings of one review: a frozen object handed down, never ambient state."""
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Literal
+
+EngineChoice = Literal["auto", "ngspice", "none"]
+
+
+@dataclass(frozen=True, slots=True)
+class Options:
+    """spots, band: Hz; tolerance: relative difference (0.01 is 1 %); band None: as the deck declares."""
+
+    spots: tuple[float, ...] = ()
+    band: tuple[float, float] | None = None
+    tolerance: float = 0.01
+    engine: EngineChoice = "auto"
+    subckt: str | None = None
+    include_dirs: tuple[Path, ...] = ()
+    ports: tuple[str, ...] = ()

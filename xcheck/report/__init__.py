@@ -1,0 +1,1 @@
+"""One review in several forms. Computes nothing."""

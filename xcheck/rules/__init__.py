@@ -1,0 +1,1 @@
+"""Findings: one small module a family, one registry."""

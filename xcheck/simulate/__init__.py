@@ -1,0 +1,1 @@
+"""ngspice in a worker process: the deck with cuts, run and measured."""

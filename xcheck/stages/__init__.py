@@ -1,0 +1,1 @@
+"""Circuit to amplifiers and stages."""
