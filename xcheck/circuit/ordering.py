@@ -1,9 +1,11 @@
 """The order in which the equations are eliminated, chosen once, and the places that fill in on the way.
 
-1. Each equation is matched with an unknown so that the product of the matched entries is largest (Duff and
-   Koster, SIAM J. Matrix Anal. Appl. 22, 2001): the matched entries are the pivots, whatever the frequency.
-   Around an amplifier with much loop gain this takes the gain itself as a pivot, the virtual ground.
+1. Each equation is matched with an unknown so that the product of the matched entries is largest, and scaled
+   so that they are 1 and all others at most 1 (Duff and Koster, SIAM J. Matrix Anal. Appl. 22, 2001): the
+   matched entries are the pivots, whatever the frequency. Around an amplifier with much loop gain this takes
+   the gain itself as a pivot, the virtual ground.
 2. The pivots are ordered by minimum degree on the symmetric pattern (George and Liu, SIAM Review 31, 1989).
+   A trial factorisation then shows which of them shrink to nothing on the way, and gives others for these.
 3. The elimination tree (Liu, SIAM J. Matrix Anal. Appl. 11, 1990) gives the filled pattern and the levels:
    the pivots of one level do not touch one another and are eliminated at once.
 """
@@ -12,9 +14,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from xcheck.circuit.arrays import Complex
+from xcheck.circuit.arrays import Complex, Real
 from xcheck.circuit.equations import Equations, Index
 from xcheck.errors import SingularCircuit
+
+LEAST_PIVOT = 1e-2
+"""A pivot may shrink to this part of the largest entry in its column, all scaled, before another is taken."""
+
+TRIALS = 3
+"""How often the order is sought anew for pivots that a trial factorisation has changed."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,11 +80,16 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
     inverse at (unknowns, rows), each (W,). Raises SingularCircuit where no set of pivots exists."""
     size = equations.size
     owner = matched(equations, values)  # equation -> the unknown that it is solved for
-    position = minimum_degree(
-        np.concatenate([owner[equations.rows], owner[rows]]),
-        np.concatenate([equations.columns, unknowns]),
-        size,
-    )
+    for _ in range(TRIALS):
+        position = minimum_degree(
+            np.concatenate([owner[equations.rows], owner[rows]]),
+            np.concatenate([equations.columns, unknowns]),
+            size,
+        )
+        tried = owner
+        owner = _stable_owner(equations, values, owner, position)
+        if np.array_equal(owner, tried):
+            break
     row_at, column_at = position[owner[equations.rows]], position[equations.columns]
     wanted_row, wanted_column = position[unknowns], position[owner[rows]]
     structure, height = filled(
@@ -114,6 +127,52 @@ def matched(equations: Equations, values: Complex) -> Index:
     owner = np.empty(size, dtype=np.int64)
     owner[row] = column
     return owner
+
+
+def _scaled(equations: Equations, values: Complex, owner: Index) -> Real:
+    """Magnitudes of the entries, equations and unknowns scaled so that pivots are 1 and all others at most 1:
+    the scales are the longest paths in the graph of the entries' logarithms, which has no rising loop because
+    the matching is the best."""
+    there = np.abs(values) > 0
+    log = np.full(len(values), -np.inf)
+    log[there] = np.log(np.abs(values[there]))
+    row = owner[equations.rows]
+    pivot = np.empty(equations.size)
+    on_pivot = row == equations.columns
+    pivot[row[on_pivot]] = log[on_pivot]
+    weight = log - pivot[row]
+    scale = np.zeros(equations.size)  # of the equation solved for an unknown, over that of the unknown
+    for _ in range(equations.size):
+        before = scale.copy()
+        np.maximum.at(scale, equations.columns[there], (scale[row] + weight)[there])
+        if (scale <= before + 1e-9).all():
+            break
+    result: Real = np.exp(weight + scale[row] - scale[equations.columns])
+    return result
+
+
+def _stable_owner(equations: Equations, values: Complex, owner: Index, position: Index) -> Index:
+    """The owners that a factorisation in the given order settles on, keeping those that it can."""
+    from scipy.sparse import coo_array
+    from scipy.sparse.linalg import splu
+
+    size = equations.size
+    phase = np.exp(1j * np.angle(values))
+    entries = _scaled(equations, values, owner) * phase
+    at = (position[owner[equations.rows]], position[equations.columns])
+    try:
+        trial = splu(
+            coo_array((entries, at), shape=(size, size)).tocsc(),
+            permc_spec="NATURAL",
+            diag_pivot_thresh=LEAST_PIVOT,
+            options={"SymmetricMode": True},
+        )
+    except RuntimeError:  # singular at this frequency, which the residual will show
+        return owner
+    column_of = np.empty(size, dtype=np.int64)  # of a row, both in the given order
+    column_of[np.argsort(trial.perm_r)] = np.argsort(trial.perm_c)
+    unknown_at = np.argsort(position)
+    return np.asarray(unknown_at[column_of[position[owner]]], dtype=np.int64)
 
 
 def minimum_degree(rows: Index, columns: Index, size: int) -> Index:

@@ -23,8 +23,11 @@ from xcheck.errors import SingularCircuit
 if TYPE_CHECKING:
     from scipy.sparse import csc_array
 
-LARGEST_RESIDUAL = 1e-8
-"""Of A Z - 1 on the diagonal, where rounding alone leaves about 1e-15."""
+LARGEST_RESIDUAL = 1e-11
+"""Of A Z - 1 against the sum of the magnitudes that make it up, where rounding alone leaves about 1e-15."""
+
+LARGEST_SUM = 1e13
+"""Of these magnitudes: beyond it, what is left of sixteen digits is chance, and the circuit is singular."""
 
 ORDERS = 4
 """Pivot orders that are tried, each chosen at a frequency where the ones before were not accurate."""
@@ -114,15 +117,20 @@ def _invert(pattern: Pattern, factors: Complex) -> Complex:
 
 
 def residual(equations: Equations, pattern: Pattern, values: Complex, inverse: Complex) -> Real:
-    """The largest diagonal entry of A Z - 1 and of Z A - 1 at each frequency, shape (F,): all products that
-    they need are on the pattern, so this tests every column of the inverse."""
-    products = values * inverse[pattern.mirrored(pattern.given)]
+    """The largest diagonal entry of A Z - 1 and of Z A - 1 at each frequency, against the sum of the
+    magnitudes that make it up, shape (F,); infinite where there is no solution. All products that these need
+    are on the pattern, so every column of the inverse is tested."""
     worst = np.zeros(values.shape[1])
-    for axis in (equations.rows, equations.columns):
-        order = np.argsort(axis, kind="stable")
-        starts = np.flatnonzero(np.diff(axis[order], prepend=-1))
-        off = np.abs(np.add.reduceat(products[order], starts, axis=0) - 1).max(axis=0, initial=0.0)
-        worst = np.maximum(worst, np.where(np.isfinite(off), off, np.inf))
+    with np.errstate(all="ignore"):  # not a number where a pivot vanished
+        products = values * inverse[pattern.mirrored(pattern.given)]
+        sizes = np.abs(products)
+        for axis in (equations.rows, equations.columns):
+            order = np.argsort(axis, kind="stable")
+            starts = np.flatnonzero(np.diff(axis[order], prepend=-1))
+            size = np.add.reduceat(sizes[order], starts, axis=0)
+            off = np.abs(np.add.reduceat(products[order], starts, axis=0) - 1) / np.maximum(size, 1)
+            off[~(size < LARGEST_SUM)] = np.inf
+            worst = np.maximum(worst, off.max(axis=0, initial=0.0))
     return worst
 
 
@@ -135,6 +143,7 @@ def by_column(equations: Equations, frequency: float, unknowns: Index, rows: Ind
     size = equations.size
     values = equations.values(np.array([frequency]))[:, 0]
     matrix = coo_array((values, (equations.rows, equations.columns)), shape=(size, size)).tocsc()
+    magnitudes = abs(matrix)
     try:
         factors = splu(matrix)
     except RuntimeError:
@@ -147,7 +156,10 @@ def by_column(equations: Equations, frequency: float, unknowns: Index, rows: Ind
         right[chosen, np.arange(len(chosen))] = 1.0
         columns = np.asarray(factors.solve(right))
         columns += factors.solve(np.asarray(right - matrix @ columns))
-        if not np.abs(np.asarray(right - matrix @ columns)).max() <= LARGEST_RESIDUAL:
+        size_of = np.asarray(magnitudes @ np.abs(columns))
+        off = np.abs(np.asarray(right - matrix @ columns))
+        enough = off <= LARGEST_RESIDUAL * (size_of + np.abs(right))
+        if not (enough.all() and (size_of[chosen, np.arange(len(chosen))] < LARGEST_SUM).all()):
             raise SingularCircuit(_undetermined(equations, matrix, frequency))
         here = (column >= start) & (column < start + 64)
         result[here] = columns[unknowns[here], column[here] - start]
