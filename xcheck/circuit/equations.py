@@ -317,3 +317,13 @@ def with_least_conductance(equations: Equations, dc: bool) -> Equations:
         conductance=np.concatenate([conductance, np.full(len(new), LEAST_CONDUCTANCE)]),
         capacitance=np.concatenate([equations.capacitance, np.zeros(len(new))]),
     )
+
+
+def parts(equations: Equations) -> Index:
+    """The part that each unknown belongs to, (N,): parts share no entry of A."""
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+
+    links = (np.ones(len(equations.rows)), (equations.rows, equations.columns))
+    graph = coo_array(links, shape=(equations.size, equations.size))
+    return np.asarray(connected_components(graph, directed=False)[1], dtype=np.int64)

@@ -14,12 +14,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from xcheck.circuit.arrays import Complex, Real
+from xcheck.circuit.arrays import Complex
 from xcheck.circuit.equations import Equations, Index
 from xcheck.errors import SingularCircuit
 
-LEAST_PIVOT = 1e-2
-"""A pivot may shrink to this part of the largest entry in its column, all scaled, before another is taken."""
+LEAST_PIVOT = 1.0
+"""Of the largest entry in its column, all scaled: a pivot that has shrunk below gives way to that entry."""
 
 TRIALS = 3
 """How often the order is sought anew for pivots that a trial factorisation has changed."""
@@ -47,6 +47,11 @@ class Level:
     sums: Index
     ends: Index
     owners: Index
+    ahead: Index
+    left_of: Index
+    sources: Index
+    feeds: Index
+    fed: Index
 
 
 @dataclass(frozen=True)
@@ -54,12 +59,14 @@ class Pattern:
     """Where the entries of the factors, and of the inverse on their pattern, are kept: places 0 .. size - 1
     hold the pivots, the next `fill` ones the columns of L, the last `fill` ones the rows of U, mirrored.
 
-    given: places of the entries of the equations; wanted: places of the entries of the inverse that were
-    asked for, (unknown, equation) each.
+    row_at, column_at: when each equation and each unknown is eliminated; given: places of the entries of the
+    equations; wanted: places of the entries of the inverse that were asked for, (unknown, equation) each.
     """
 
     size: int
     fill: int
+    row_at: Index
+    column_at: Index
     given: Index
     wanted: Index
     levels: tuple[Level, ...]
@@ -80,6 +87,7 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
     inverse at (unknowns, rows), each (W,). Raises SingularCircuit where no set of pivots exists."""
     size = equations.size
     owner = matched(equations, values)  # equation -> the unknown that it is solved for
+    scaled = _scaled(equations, values, owner)
     for _ in range(TRIALS):
         position = minimum_degree(
             np.concatenate([owner[equations.rows], owner[rows]]),
@@ -87,7 +95,7 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
             size,
         )
         tried = owner
-        owner = _stable_owner(equations, values, owner, position)
+        owner = _stable_owner(equations, scaled, owner, position)
         if np.array_equal(owner, tried):
             break
     row_at, column_at = position[owner[equations.rows]], position[equations.columns]
@@ -101,6 +109,8 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
     return Pattern(
         size=size,
         fill=len(below),
+        row_at=position[owner],
+        column_at=position,
         given=table.at(row_at, column_at),
         wanted=table.at(wanted_row, wanted_column),
         levels=_levels(count, below, height, table),
@@ -129,40 +139,38 @@ def matched(equations: Equations, values: Complex) -> Index:
     return owner
 
 
-def _scaled(equations: Equations, values: Complex, owner: Index) -> Real:
-    """Magnitudes of the entries, equations and unknowns scaled so that pivots are 1 and all others at most 1:
-    the scales are the longest paths in the graph of the entries' logarithms, which has no rising loop because
-    the matching is the best."""
-    there = np.abs(values) > 0
-    log = np.full(len(values), -np.inf)
-    log[there] = np.log(np.abs(values[there]))
-    row = owner[equations.rows]
-    pivot = np.empty(equations.size)
-    on_pivot = row == equations.columns
-    pivot[row[on_pivot]] = log[on_pivot]
+def _scaled(equations: Equations, values: Complex, owner: Index) -> Complex:
+    """The entries, equations and unknowns scaled so that pivots are 1 and all others at most 1: the scales
+    are the longest paths in the graph of the entries' logarithms, which has no rising loop because the
+    matching is the best."""
+    size = equations.size
+    there = np.flatnonzero(np.abs(values) > 0)
+    log = np.log(np.abs(values[there]))
+    row, column = owner[equations.rows[there]], equations.columns[there]
+    pivot = np.empty(size)
+    pivot[row[row == column]] = log[row == column]
     weight = log - pivot[row]
-    scale = np.zeros(equations.size)  # of the equation solved for an unknown, over that of the unknown
-    for _ in range(equations.size):
+    scale = np.zeros(size)  # of the equation solved for an unknown, over that of the unknown
+    for _ in range(size):
         before = scale.copy()
-        np.maximum.at(scale, equations.columns[there], (scale[row] + weight)[there])
+        np.maximum.at(scale, column, scale[row] + weight)
         if (scale <= before + 1e-9).all():
             break
-    result: Real = np.exp(weight + scale[row] - scale[equations.columns])
+    result = np.zeros(len(values), dtype=np.complex128)
+    result[there] = np.exp(weight + scale[row] - scale[column] + 1j * np.angle(values[there]))
     return result
 
 
-def _stable_owner(equations: Equations, values: Complex, owner: Index, position: Index) -> Index:
+def _stable_owner(equations: Equations, scaled: Complex, owner: Index, position: Index) -> Index:
     """The owners that a factorisation in the given order settles on, keeping those that it can."""
     from scipy.sparse import coo_array
     from scipy.sparse.linalg import splu
 
     size = equations.size
-    phase = np.exp(1j * np.angle(values))
-    entries = _scaled(equations, values, owner) * phase
     at = (position[owner[equations.rows]], position[equations.columns])
     try:
         trial = splu(
-            coo_array((entries, at), shape=(size, size)).tocsc(),
+            coo_array((scaled, at), shape=(size, size)).tocsc(),
             permc_spec="NATURAL",
             diag_pivot_thresh=LEAST_PIVOT,
             options={"SymmetricMode": True},
@@ -239,14 +247,28 @@ def _levels(count: Index, below: Index, height: Index, table: _Places) -> tuple[
     first = np.concatenate([[0], np.cumsum(count)])
     order = np.argsort(height, kind="stable")
     bounds = np.searchsorted(height[order], np.arange(int(height.max(initial=0)) + 2))
-    return tuple(
-        _level(order[a:b], count, first, below, table, size)
-        for a, b in zip(bounds[:-1].tolist(), bounds[1:].tolist(), strict=True)
-    )
+    by_row = np.lexsort((np.arange(len(below)), below, height[below]))  # entries of L, by level and row
+    row_bounds = np.searchsorted(height[below[by_row]], np.arange(len(bounds)))
+    column = np.repeat(np.arange(size), count)
+    levels: list[Level] = []
+    for n in range(len(bounds) - 1):
+        pivots = order[bounds[n] : bounds[n + 1]]
+        entries = by_row[row_bounds[n] : row_bounds[n + 1]]
+        fed, feeds = np.unique(below[entries], return_index=True)
+        rows = (size + entries, column[entries], feeds.astype(np.int64), fed)
+        levels.append(_level(pivots, count, first, below, table, rows))
+    return tuple(levels)
 
 
-def _level(pivots: Index, count: Index, first: Index, below: Index, table: _Places, size: int) -> Level:
-    fill = len(below)
+def _level(
+    pivots: Index,
+    count: Index,
+    first: Index,
+    below: Index,
+    table: _Places,
+    rows: tuple[Index, Index, Index, Index],
+) -> Level:
+    size, fill = len(count), len(below)
     m = count[pivots]
     entry = _ranges(first[pivots], m)  # the entries of L below these pivots
     each = np.repeat(m, m)  # per entry, how many share its column
@@ -255,7 +277,6 @@ def _level(pivots: Index, count: Index, first: Index, below: Index, table: _Plac
     across = table.at(below[a], below[b])
     by_target = np.argsort(across, kind="stable")
     target, runs = np.unique(across[by_target], return_index=True)
-    sums = np.concatenate([[0], np.cumsum(each)])[:-1].astype(np.int64)
     return Level(
         pivots=pivots,
         lower=size + entry,
@@ -266,9 +287,14 @@ def _level(pivots: Index, count: Index, first: Index, below: Index, table: _Plac
         runs=runs.astype(np.int64),
         across=across,
         along=size + b,
-        sums=sums,
-        ends=np.concatenate([[0], np.cumsum(m)])[:-1][m > 0].astype(np.int64),
+        sums=(np.cumsum(each) - each).astype(np.int64),
+        ends=(np.cumsum(m) - m)[m > 0].astype(np.int64),
         owners=pivots[m > 0],
+        ahead=below[entry],
+        left_of=rows[0],
+        sources=rows[1],
+        feeds=rows[2],
+        fed=rows[3],
     )
 
 

@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xcheck.circuit.arrays import Complex, Real
-from xcheck.circuit.equations import Equations, Index
+from xcheck.circuit.equations import Equations, Index, parts
 from xcheck.circuit.solution import inverse_entries
 from xcheck.errors import SingularCircuit
 
@@ -20,7 +20,7 @@ def inverse_by_part(
         return inverse_entries(equations, frequency, unknowns, rows), {}
     except SingularCircuit as error:
         reason = str(error)
-    part = _parts(equations)
+    part = parts(equations)
     result = np.zeros((len(unknowns), len(frequency)), dtype=np.complex128)
     middle = (int(part.max()) + 1) // 2
     if not middle:
@@ -35,16 +35,6 @@ def inverse_by_part(
             )
             failures.update({int(there[index]): why for index, why in failed.items()})
     return result, failures
-
-
-def _parts(equations: Equations) -> Index:
-    """The part that each unknown belongs to."""
-    from scipy.sparse import coo_array
-    from scipy.sparse.csgraph import connected_components
-
-    links = (np.ones(len(equations.rows)), (equations.rows, equations.columns))
-    graph = coo_array(links, shape=(equations.size, equations.size))
-    return np.asarray(connected_components(graph, directed=False)[1], dtype=np.int64)
 
 
 def restricted(equations: Equations, kept: NDArray[np.bool_]) -> Equations:

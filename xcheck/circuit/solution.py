@@ -14,26 +14,33 @@ tree, never the frequency.
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from xcheck.circuit.arrays import Complex, Real
-from xcheck.circuit.equations import Equations, Index, with_least_conductance
+from xcheck.circuit.equations import Equations, Index, parts, with_least_conductance
 from xcheck.circuit.ordering import Pattern, pivot_order
 from xcheck.errors import SingularCircuit
 
 if TYPE_CHECKING:
     from scipy.sparse import csc_array
 
-LARGEST_RESIDUAL = 1e-11
-"""Of A Z - 1 against the sum of the magnitudes that make it up, where rounding alone leaves about 1e-15."""
+LARGEST_RESIDUAL = 1e-10
+"""Of an equation, against the sum of the magnitudes in it, where rounding alone leaves about 1e-15."""
+
+LARGEST_ERROR = 1e-9
+"""Of an entry of the inverse, relative, against the solution for its right-hand side."""
 
 LARGEST_SUM = 1e13
-"""Of these magnitudes: beyond it, what is left of sixteen digits is chance, and the circuit is singular."""
+"""Of the magnitudes in A Z: beyond it what is left of the digits is chance, and the circuit is singular."""
 
 ORDERS = 4
 """Pivot orders that are tried, each chosen at a frequency where the ones before were not accurate."""
 
-BLOCK_BYTES = 256e6
-"""Frequencies are taken in blocks so that the factors of a block stay below this."""
+PROBES = 2
+"""Columns of the inverse that are solved for as well, in each part of the circuit and at every frequency."""
+
+BLOCK_BYTES = 32e6
+"""Frequencies are taken in blocks whose factors stay near this: memory stays small, and caches are used."""
 
 
 def inverse_entries(equations: Equations, frequency: Real, unknowns: Index, rows: Index) -> Complex:
@@ -54,6 +61,7 @@ def inverse_entries(equations: Equations, frequency: Real, unknowns: Index, rows
 
 def _entries(equations: Equations, frequency: Real, unknowns: Index, rows: Index) -> Complex:
     result = np.empty((len(unknowns), len(frequency)), dtype=np.complex128)
+    probes = _probes(equations, rows)
     left = np.argsort(frequency, kind="stable")
     for _ in range(ORDERS):
         typical = frequency[left[len(left) // 4]]
@@ -63,9 +71,13 @@ def _entries(equations: Equations, frequency: Real, unknowns: Index, rows: Index
         for start in range(0, len(left), step):
             block = slice(start, start + step)
             values = equations.values(frequency[left[block]])
-            inverse = selected_inverse(pattern, values)
+            factors, inverse = selected_inverse(pattern, values)
+            entries = inverse[pattern.wanted]
+            result[:, left[block]] = entries
             accurate[block] = residual(equations, pattern, values, inverse) <= LARGEST_RESIDUAL
-            result[:, left[block]] = inverse[pattern.wanted]
+            for chosen in probes:
+                answer, right = _probed(equations, pattern, factors, rows, chosen)
+                accurate[block] &= _agree(equations, values, answer, right, entries[chosen], unknowns[chosen])
         left = left[~accurate]
         if not left.size:
             return result
@@ -74,17 +86,77 @@ def _entries(equations: Equations, frequency: Real, unknowns: Index, rows: Index
     return result
 
 
-def selected_inverse(pattern: Pattern, values: Complex) -> Complex:
-    """The inverse on the pattern, (places, F), from the entries of the equations (E, F)."""
+def _probes(equations: Equations, rows: Index) -> list[NDArray[np.bool_]]:
+    """Which of the entries asked for each probe looks at: those of one column in every part, drawn by lot.
+    Parts do not touch, so one right-hand side serves them all."""
+    part = parts(equations)
+    columns = np.unique(rows)
+    draw = np.random.default_rng(0)
+    probes = []
+    for _ in range(PROBES):
+        lot = np.lexsort((draw.random(len(columns)), part[columns]))
+        _, first = np.unique(part[columns[lot]], return_index=True)
+        drawn = np.zeros(equations.size, dtype=np.bool_)
+        drawn[columns[lot[first]]] = True
+        probes.append(drawn[rows])
+    return probes
+
+
+def _probed(
+    equations: Equations, pattern: Pattern, factors: Complex, rows: Index, chosen: NDArray[np.bool_]
+) -> tuple[Complex, Complex]:
+    """The solution (N, F) for a unit on each of the chosen rows, and that right-hand side."""
+    right = np.zeros((equations.size, 1), dtype=np.complex128)
+    right[rows[chosen]] = 1.0
+    return solve(pattern, factors, right), right
+
+
+def _agree(
+    equations: Equations, values: Complex, answer: Complex, right: Complex, entries: Complex, unknowns: Index
+) -> NDArray[np.bool_]:
+    """Whether a solution fulfils the equations, and entries of the inverse are the solution's, (F,)."""
+    order, starts = _by_row(equations)
+    with np.errstate(all="ignore"):
+        products = values[order] * answer[equations.columns[order]]
+        off = np.abs(np.add.reduceat(products, starts, axis=0) - right)
+        size = np.add.reduceat(np.abs(products), starts, axis=0) + np.abs(right)
+        fulfilled = (off <= LARGEST_RESIDUAL * size).all(axis=0)
+        expected = answer[unknowns]
+        floor = 4 * np.finfo(np.float64).eps * np.abs(expected).max(axis=0, initial=0.0)
+        same = np.abs(entries - expected) <= LARGEST_ERROR * np.abs(expected) + floor
+    result: NDArray[np.bool_] = fulfilled & same.all(axis=0)
+    return result
+
+
+def selected_inverse(pattern: Pattern, values: Complex) -> tuple[Complex, Complex]:
+    """The factors (pivots, L below them and U beside them, both with unit diagonals) and the inverse on the
+    pattern, (places, F) each, from the entries of the equations, (E, F)."""
     with np.errstate(all="ignore"):  # a pivot that vanishes shows in the residual
         factors = np.zeros((pattern.places, values.shape[1]), dtype=np.complex128)
         factors[pattern.given] = values
         _eliminate(pattern, factors)
-        return _invert(pattern, factors)
+        return factors, _invert(pattern, factors)
+
+
+def solve(pattern: Pattern, factors: Complex, right: Complex) -> Complex:
+    """The solution (N, F) for a right-hand side, (N, F) or (N, 1)."""
+    answer = np.zeros((pattern.size, factors.shape[1]), dtype=np.complex128)
+    answer[pattern.row_at] = right
+    with np.errstate(all="ignore"):
+        for level in pattern.levels:
+            if level.fed.size:
+                products = factors[level.left_of] * answer[level.sources]
+                answer[level.fed] -= np.add.reduceat(products, level.feeds, axis=0)
+        answer /= factors[: pattern.size]
+        for level in reversed(pattern.levels):
+            if level.ahead.size:
+                products = factors[level.lower + pattern.fill] * answer[level.ahead]
+                answer[level.owners] -= np.add.reduceat(products, level.ends, axis=0)
+    return answer[pattern.column_at]
 
 
 def _eliminate(pattern: Pattern, factors: Complex) -> None:
-    """In place: pivots, L below them with a unit diagonal, U beside them."""
+    """In place, U still with the pivots in its rows."""
     for level in pattern.levels:
         factors[level.lower] /= factors[level.divisor]
         if level.left.size:
@@ -117,21 +189,22 @@ def _invert(pattern: Pattern, factors: Complex) -> Complex:
 
 
 def residual(equations: Equations, pattern: Pattern, values: Complex, inverse: Complex) -> Real:
-    """The largest diagonal entry of A Z - 1 and of Z A - 1 at each frequency, against the sum of the
-    magnitudes that make it up, shape (F,); infinite where there is no solution. All products that these need
-    are on the pattern, so every column of the inverse is tested."""
-    worst = np.zeros(values.shape[1])
+    """The largest diagonal entry of A Z - 1 at each frequency, against the sum of the magnitudes that make it
+    up, shape (F,); infinite where there is no solution. All products that it needs are on the pattern."""
+    order, starts = _by_row(equations)
     with np.errstate(all="ignore"):  # not a number where a pivot vanished
-        products = values * inverse[pattern.mirrored(pattern.given)]
-        sizes = np.abs(products)
-        for axis in (equations.rows, equations.columns):
-            order = np.argsort(axis, kind="stable")
-            starts = np.flatnonzero(np.diff(axis[order], prepend=-1))
-            size = np.add.reduceat(sizes[order], starts, axis=0)
-            off = np.abs(np.add.reduceat(products[order], starts, axis=0) - 1) / np.maximum(size, 1)
-            off[~(size < LARGEST_SUM)] = np.inf
-            worst = np.maximum(worst, off.max(axis=0, initial=0.0))
+        products = values[order] * inverse[pattern.mirrored(pattern.given[order])]
+        size = np.add.reduceat(np.abs(products), starts, axis=0)
+        off = np.abs(np.add.reduceat(products, starts, axis=0) - 1) / np.maximum(size, 1)
+    off[~(size < LARGEST_SUM)] = np.inf
+    worst: Real = off.max(axis=0, initial=0.0)
     return worst
+
+
+def _by_row(equations: Equations) -> tuple[Index, Index]:
+    """The entries in the order of their equations, and where each equation's begin."""
+    order = np.argsort(equations.rows, kind="stable")
+    return order, np.flatnonzero(np.diff(equations.rows[order], prepend=-1))
 
 
 def by_column(equations: Equations, frequency: float, unknowns: Index, rows: Index) -> Complex:
@@ -148,22 +221,33 @@ def by_column(equations: Equations, frequency: float, unknowns: Index, rows: Ind
         factors = splu(matrix)
     except RuntimeError:
         raise SingularCircuit(_undetermined(equations, matrix, frequency)) from None
-    result = np.empty(len(rows), dtype=np.complex128)
+    result = np.zeros(len(rows), dtype=np.complex128)
+    part = parts(equations)
     wanted, column = np.unique(rows, return_inverse=True)
-    for start in range(0, len(wanted), 64):
-        chosen = wanted[start : start + 64]
-        right = np.zeros((size, len(chosen)), dtype=np.complex128)
-        right[chosen, np.arange(len(chosen))] = 1.0
+    turn = _turn_in_part(part[wanted])
+    for start in range(0, int(turn.max(initial=-1)) + 1, 16):
+        now = (turn >= start) & (turn < start + 16)
+        right = np.zeros((size, 16), dtype=np.complex128)
+        right[wanted[now], turn[now] - start] = 1.0
         columns = np.asarray(factors.solve(right))
         columns += factors.solve(np.asarray(right - matrix @ columns))
         size_of = np.asarray(magnitudes @ np.abs(columns))
         off = np.abs(np.asarray(right - matrix @ columns))
         enough = off <= LARGEST_RESIDUAL * (size_of + np.abs(right))
-        if not (enough.all() and (size_of[chosen, np.arange(len(chosen))] < LARGEST_SUM).all()):
+        if not (enough.all() and (size_of[right != 0] < LARGEST_SUM).all()):
             raise SingularCircuit(_undetermined(equations, matrix, frequency))
-        here = (column >= start) & (column < start + 64)
-        result[here] = columns[unknowns[here], column[here] - start]
+        here = now[column] & (part[unknowns] == part[rows])  # across parts nothing answers
+        result[here] = columns[unknowns[here], turn[column[here]] - start]
     return result
+
+
+def _turn_in_part(part: Index) -> Index:
+    """Numbers the members of each part from 0: columns of different parts can share a right-hand side."""
+    order = np.argsort(part, kind="stable")
+    _, first, count = np.unique(part[order], return_index=True, return_counts=True)
+    turn = np.empty(len(part), dtype=np.int64)
+    turn[order] = np.arange(len(part)) - np.repeat(first, count)
+    return turn
 
 
 def _undetermined(equations: Equations, matrix: "csc_array", frequency: float) -> str:
