@@ -44,8 +44,6 @@ class AllowedFolders:
         return get_close_matches(Path(wanted).name, names, n=3)
 
     def _places(self, beside: Path) -> list[tuple[Path, Path]]:
-        relative = (
-            Path(*beside.relative_to(self._home).parts) if beside.is_relative_to(self._home) else beside
-        )
+        relative = Path(*beside.relative_to(self._home).parts) if beside.is_relative_to(self._home) else beside
         shown = self._shown_home / relative if not relative.is_absolute() else relative
         return [(beside, shown), (self._home, self._shown_home), *((d, given) for given, d in self._extra)]

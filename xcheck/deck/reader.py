@@ -135,6 +135,9 @@ class _Reading:
                 )  # fmt: skip
             else:
                 self.pending.add(content, name, number, start + 1)
+                if low.startswith((".inc", ".lib")):
+                    # written in place at once, so that comments behind it count the cards that it brings
+                    self._flush()
 
     def _continue(self, body: str, name: str, number: int, column: int) -> None:
         if not self.pending.pieces:
@@ -163,9 +166,7 @@ class _Reading:
             fields = fields_of(text)
         except Unbalanced as fault:
             place = Card(text, "", (), segments).place_of(fault.offset, fault.offset + 1)
-            self._say(
-                "syntax", "error", place, f"{fault}: `{_short(text)}`", "close it; the line is not read"
-            )
+            self._say("syntax", "error", place, f"{fault}: `{_short(text)}`", "close it; the line is not read")
             return
         if not fields:
             return

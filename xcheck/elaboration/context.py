@@ -1,0 +1,87 @@
+"""Where an element is being made: names and nodes made flat, values evaluated, models looked up."""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+from xcheck.circuit.elements import GROUND
+from xcheck.deck.cards import Card, Field
+from xcheck.deck.numbers import read_number
+from xcheck.elaboration.definitions import Body
+from xcheck.elaboration.expressions import ExpressionError, Node, parse
+from xcheck.elaboration.problems import Problems
+from xcheck.elaboration.scopes import Scope
+from xcheck.elaboration.words import braced
+
+
+@dataclass(frozen=True)
+class Context:
+    """One instance's surroundings. bodies: the bodies whose definitions can be seen, innermost first."""
+
+    prefix: str
+    path: tuple[str, ...]
+    pins: Mapping[str, str]
+    everywhere: frozenset[str]
+    scope: Scope
+    bodies: Sequence[Body]
+    problems: Problems
+
+    def node(self, word: str) -> str:
+        """A node's flat name; `word` in lower case."""
+        if word in ("0", "gnd"):
+            return GROUND
+        mapped = self.pins.get(word)
+        if mapped is not None:
+            return mapped
+        return word if word in self.everywhere else self.prefix + word
+
+    def name(self, card: Card) -> str:
+        return self.prefix + card.fields[0].key
+
+    def model(self, name: str) -> Card | None:
+        """The card of a model that can be seen from here."""
+        for body in self.bodies:
+            card = body.models.get(name)
+            if card is not None:
+                return card
+        return None
+
+    def model_names(self) -> list[str]:
+        return [name for body in self.bodies for name in body.models]
+
+
+class Amount:
+    """A value field of a card: a number as ngspice reads it, or an expression, parsed once."""
+
+    __slots__ = ("card", "constant", "fault", "field", "tree")
+
+    def __init__(self, card: Card, field: Field) -> None:
+        self.card, self.field = card, field
+        self.constant: float | None = None
+        self.tree: Node | None = None
+        self.fault: ExpressionError | None = None
+        inside = braced(field.text)
+        number = read_number(field.text) if inside is None else None
+        if number is not None:
+            self.constant = number.value
+            return
+        try:
+            self.tree = parse(field.text if inside is None else inside)
+        except ExpressionError as fault:
+            self.fault = fault
+
+    def at(self, context: Context) -> float | None:
+        """The value in a context; None where it has none, which is then a finding."""
+        if self.constant is not None:
+            return self.constant
+        try:
+            if self.fault is not None or self.tree is None:
+                raise self.fault or ExpressionError("it is empty")
+            return context.scope.evaluator().value(self.tree)
+        except ExpressionError as error:
+            context.problems.expression(error, self.card, self.field, context.scope.names())
+            return None
+
+
+def is_value(field: Field) -> bool:
+    """Whether a field is a number or a wrapped expression rather than a name."""
+    return braced(field.text) is not None or read_number(field.text) is not None

@@ -1,0 +1,168 @@
+"""E, F, G, H and B cards to linear controlled sources, or to devices where they are not linear."""
+
+import re
+from typing import Literal
+
+from xcheck.circuit.elements import Controlled, Device, Element, Origin, Term
+from xcheck.deck.cards import Card, Field
+from xcheck.elaboration.affine import Linear, Probe, depends_on_time, linear_form, probes_in
+from xcheck.elaboration.context import Amount, Context, is_value
+from xcheck.elaboration.expressions import ExpressionError
+from xcheck.elaboration.passives import Maker
+from xcheck.elaboration.problems import Problems
+from xcheck.elaboration.words import opened, words_of
+
+_POLY = re.compile(r"poly\s*(?:\(\s*(\d+)\s*\))?$")
+Kind = Literal["e", "f", "g", "h"]
+
+
+def controlled(card: Card, problems: Problems) -> Maker | None:
+    """`E1 o 0 p n 1e5`, `E1 o 0 POLY(2) a 0 b 0 0 1 1`, `E1 o 0 VALUE={...}`, `F1 o 0 V1 2`, ..."""
+    kind: Kind = card.kind  # type: ignore[assignment]  # the caller chose by the letter
+    words = words_of(card)
+    fields = opened(card.fields[1:])
+    if len(fields) < 3:
+        problems.say("syntax", "error", card, None, f"`{card.text[:60]}`: nodes and a gain are wanted")
+        return None
+    for key in ("value", "vol", "cur"):
+        if key in words.pairs:
+            return _expression(card, words.pairs[key], "e" if key == "vol" or kind in "eh" else "g")
+    head = fields[2].key.split("{")[0].split("(")[0]
+    if head == "value" and len(fields) > 3:
+        return _expression(card, fields[3], kind)
+    if head in ("table", "laplace", "freq", "chebyshev"):
+        return _device(card, "frequency-dependent expression" if head != "table" else "table")
+    if (poly := _POLY.match(fields[2].key)) or fields[2].key == "poly":
+        return _poly(card, kind, fields, poly.group(1) if poly else None, problems)
+    wanted = 2 if kind in "eg" else 1
+    controls, gains = fields[2 : 2 + wanted], fields[2 + wanted :]
+    if len(controls) < wanted or not gains:
+        problems.say(
+            "value-missing",
+            "error",
+            card,
+            None,
+            f"`{card.text[:60]}` has no gain",
+            "write the gain as last field",
+        )
+        return None
+    gain = Amount(card, gains[0])
+    nodes = (fields[0].key, fields[1].key)
+
+    def make(context: Context) -> Element | None:
+        value = gain.at(context)
+        ends = (context.node(nodes[0]), context.node(nodes[1]))
+        if value is None:
+            return Device(context.name(card), kind, ends, (), "", "value unknown", Origin(card, context.path))
+        term = _term(value, controls, context)
+        return Controlled(context.name(card), kind, ends, (term,), 0.0, Origin(card, context.path))
+
+    return make
+
+
+def _term(gain: float, controls: tuple[Field, ...], context: Context) -> Term:
+    if len(controls) == 1:
+        return Term(gain, source=context.prefix + controls[0].key)
+    return Term(gain, context.node(controls[0].key), context.node(controls[1].key))
+
+
+def _poly(card: Card, kind: Kind, fields: tuple[Field, ...], dimension: str | None, problems: Problems) -> Maker | None:
+    start = 3
+    if dimension is None:
+        dimension, start = fields[3].text.strip("()"), 4
+    if not dimension.isdigit() or not 0 < int(dimension) <= 1000:
+        problems.say("syntax", "error", card, fields[2], f"POLY wants a number of inputs, read `{dimension}`")
+        return None
+    count = int(dimension)
+    width = 2 if kind in "eg" else 1
+    controls = fields[start : start + width * count]
+    coefficients = [Amount(card, f) for f in fields[start + width * count :] if f.text != "="]
+    if len(controls) < width * count or not coefficients:
+        problems.say("syntax", "error", card, fields[2], f"POLY({count}) wants {width * count} inputs and values")
+        return None
+    nodes = (fields[0].key, fields[1].key)
+
+    def make(context: Context) -> Element | None:
+        name, origin = context.name(card), Origin(card, context.path)
+        ends = (context.node(nodes[0]), context.node(nodes[1]))
+        sensing = tuple(context.node(f.key) for f in controls) if width == 2 else ()
+        values = [c.at(context) for c in coefficients]
+        if any(v is None for v in values):
+            return Device(name, kind, ends, sensing, "", "value unknown", origin)
+        numbers = [v for v in values if v is not None]
+        if count == 1 and len(numbers) == 1:
+            numbers.insert(0, 0.0)  # a single coefficient of a one-input POLY is its gain, not its constant
+        if any(numbers[count + 1 :]):
+            return Device(name, kind, ends, sensing, "", "polynomial of higher degree", origin)
+        gains = numbers[1 : count + 1]
+        terms = [_term(gain, controls[width * k : width * (k + 1)], context) for k, gain in enumerate(gains) if gain]
+        return Controlled(name, kind, ends, tuple(terms), numbers[0], origin)
+
+    return make
+
+
+def behavioural(card: Card, problems: Problems) -> Maker | None:
+    """`B1 a b V={...}` or `I={...}`."""
+    pairs = words_of(card).pairs
+    if "v" in pairs:
+        return _expression(card, pairs["v"], "e")
+    if "i" in pairs:
+        return _expression(card, pairs["i"], "g")
+    problems.say("syntax", "error", card, None, f"`{card.text[:60]}`: `V=` or `I=` is wanted")
+    return None
+
+
+def _expression(card: Card, field: Field, kind: Kind) -> Maker:
+    nodes = (card.fields[1].key, card.fields[2].key)
+    amount = Amount(card, field)
+
+    def make(context: Context) -> Element | None:
+        name, origin = context.name(card), Origin(card, context.path)
+        ends = (context.node(nodes[0]), context.node(nodes[1]))
+        if amount.tree is None:
+            level = amount.at(context)
+            if level is None:
+                return Device(name, card.kind, ends, (), "", "value unknown", origin)
+            return Controlled(name, kind, ends, (), level, origin)
+        probes = probes_in(amount.tree)
+        sensing = tuple(dict.fromkeys(context.node(n) for letter, ns in probes if letter == "v" for n in ns))
+        try:
+            form = None if depends_on_time(amount.tree) else linear_form(amount.tree, context.scope.evaluator())
+        except ExpressionError as error:
+            if not error.unknown:
+                return Device(name, card.kind, ends, sensing, "", "expression", origin)
+            context.problems.expression(error, card, field, context.scope.names())
+            return Device(name, card.kind, ends, sensing, "", "value unknown", origin)
+        if form is None:
+            return Device(name, card.kind, ends, sensing, "", "expression", origin)
+        return _from_form(name, kind, ends, form, context, origin)
+
+    return make
+
+
+def _from_form(
+    name: str, kind: Kind, ends: tuple[str, str], form: Linear, context: Context, origin: Origin
+) -> Controlled:
+    terms = tuple(_probe_term(gain, probe, context) for probe, gain in form.gains.items() if gain)
+    return Controlled(name, kind, ends, terms, form.constant, origin)
+
+
+def _probe_term(gain: float, probe: Probe, context: Context) -> Term:
+    letter, words = probe
+    if letter == "i":
+        return Term(gain, source=context.prefix + words[0])
+    return Term(gain, context.node(words[0]), context.node(words[1] if len(words) > 1 else "0"))
+
+
+def _device(card: Card, reason: str) -> Maker:
+    nodes = (card.fields[1].key, card.fields[2].key)
+    inside = [f.key for f in opened(card.fields[4:]) if not is_value(f) and re.fullmatch(r"[\w.+\-/]+", f.text)]
+    probes = re.findall(r"v\s*\(([^()]*)\)", card.text.lower())
+    named = [w for p in probes for w in re.split(r"[\s,]+", p.strip())] or inside
+
+    def make(context: Context) -> Element | None:
+        ends = (context.node(nodes[0]), context.node(nodes[1]))
+        sensing = tuple(dict.fromkeys(context.node(w) for w in named))
+        return Device(context.name(card), card.kind, ends, sensing, "", reason, Origin(card, context.path))
+
+    return make

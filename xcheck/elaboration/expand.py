@@ -1,0 +1,296 @@
+"""Elaboration: bodies expanded instance by instance into one flat circuit."""
+
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, field
+
+from xcheck.circuit.elements import Analysis, Circuit, Device, Element, Instance, Origin
+from xcheck.deck.cards import Card, Deck, Field
+from xcheck.elaboration.analyses import KINDS as KINDS_OF_ANALYSIS
+from xcheck.elaboration.analyses import analysis_of, is_analysis, temperature_of
+from xcheck.elaboration.context import Context
+from xcheck.elaboration.controlled import behavioural, controlled
+from xcheck.elaboration.definitions import Body, Branches, Definition, sort_cards
+from xcheck.elaboration.devices import KINDS, code_model, device
+from xcheck.elaboration.expressions import ExpressionError, Function, parse
+from xcheck.elaboration.passives import Maker, coupling, passive
+from xcheck.elaboration.problems import Problems
+from xcheck.elaboration.scopes import Scope
+from xcheck.elaboration.sources import source
+from xcheck.elaboration.words import Words, braced, words_of
+from xcheck.errors import CallError
+
+MOST_ELEMENTS = 300_000
+DEEPEST_INSTANCE = 60
+
+MAKERS: Mapping[str, Callable[[Card, Problems], Maker | None]] = {
+    "r": passive, "c": passive, "l": passive, "k": coupling, "v": source, "i": source,
+    "e": controlled, "f": controlled, "g": controlled, "h": controlled, "b": behavioural,
+    "a": code_model, **dict.fromkeys(KINDS, device),
+}  # fmt: skip
+"""What makes an element of a card, by the card's letter."""
+
+
+def elaborate(deck: Deck, subckt: str | None = None) -> Circuit:
+    """The flat circuit of a deck, or of one of its subcircuit definitions with the pins as its ports.
+
+    All that is wrong is in `Circuit.findings`. Raises CallError where no subcircuit of that name is defined.
+    """
+    return _Elaboration(deck).circuit(subckt)
+
+
+@dataclass
+class _Plan:
+    """A body read once: what each card makes, and its instances."""
+
+    makers: list[Maker] = field(default_factory=list)
+    instances: list["_Call"] = field(default_factory=list)
+    order: list["Maker | _Call"] = field(default_factory=list)
+
+
+@dataclass(frozen=True)
+class _Call:
+    """An instance card: its nodes, the subcircuit's name, and its arguments."""
+
+    card: Card
+    nodes: tuple[Field, ...]
+    subckt: Field
+    arguments: Mapping[str, Field]
+
+
+class _Elaboration:
+    def __init__(self, deck: Deck) -> None:
+        self.deck = deck
+        self.problems = Problems()
+        self.top = sort_cards(deck, self.problems)
+        self.functions: dict[str, Function] = {}
+        self.everywhere = self._global_nodes()
+        self.elements: list[Element] = []
+        self.instances: list[Instance] = []
+        self.plans: dict[int, _Plan] = {}
+        self.full = False
+
+    def circuit(self, subckt: str | None) -> Circuit:
+        self._functions(self.top)
+        scope = Scope(None, self.functions, self.problems)
+        celsius = temperature_of(self.deck.cards, scope, self.problems)
+        scope.set("temper", celsius)
+        self._parameters(self.top, scope)
+        boundary: tuple[str, ...] = ()
+        if subckt is None:
+            context = Context("", (), {}, self.everywhere, scope, (self.top,), self.problems)
+            self._expand(self.top, context, ())
+            analyses = self._analyses(scope)
+        else:
+            boundary = self._block(subckt, scope)
+            analyses = ()
+        return Circuit(
+            deck=self.deck, elements=tuple(self.elements), instances=tuple(self.instances), analyses=analyses,
+            directives=self.deck.directives, boundary=boundary, findings=self.problems.findings(),
+            temperature=celsius,
+        )  # fmt: skip
+
+    def _block(self, name: str, scope: Scope) -> tuple[str, ...]:
+        definition = self.top.subckts.get(name.lower())
+        if definition is None:
+            known = ", ".join(sorted(self.top.subckts)) or "none"
+            raise CallError(f"{self.deck.path} defines no subcircuit `{name}` (it defines: {known})")
+        inner = Scope(scope, self.functions, self.problems)
+        for key, value in definition.defaults.items():
+            inner.define(key, definition.card, value)
+        self._parameters(definition.body, inner)
+        pins = {pin: pin for pin in definition.pins}
+        bodies = (definition.body, self.top)
+        context = Context("", (), pins, self.everywhere, inner, bodies, self.problems)
+        self._expand(definition.body, context, (definition.name,))
+        return definition.pins
+
+    def _global_nodes(self) -> frozenset[str]:
+        return frozenset(f.key for card in self.deck.cards if card.kind == ".global" for f in card.fields[1:])
+
+    def _analyses(self, scope: Scope) -> tuple[Analysis, ...]:
+        return tuple(analysis_of(card, scope) for card in self.deck.cards if is_analysis(card))
+
+    def _functions(self, body: Body) -> None:
+        """User functions of the whole deck: ngspice knows them everywhere."""
+        for card in self.deck.cards:
+            if card.kind == ".func" or (card.kind == ".param" and "(" in card.text.split("=")[0]):
+                self._function(card)
+
+    def _function(self, card: Card) -> None:
+        text = card.text[len(card.fields[0].text) :].strip()
+        head, closing, rest = text.partition(")")
+        name, opening, names = head.partition("(")
+        expression = rest.strip().removeprefix("=").strip()
+        if not opening or not closing or not expression:
+            self.problems.say("syntax", "error", card, None, "a function is written `.func f(x) {x*2}`")
+            return
+        parameters = tuple(n.strip().lower() for n in names.split(",") if n.strip())
+        inside = braced(expression)
+        try:
+            body = parse(expression if inside is None else inside)
+        except ExpressionError as error:
+            self.problems.expression(error, card, card.fields[-1], [])
+            return
+        self.functions[name.strip().lower()] = Function(parameters, body)
+
+    def _parameters(self, body: Body, scope: Scope) -> None:
+        for card in self._cards(body, scope):
+            if card.kind == ".param" and "(" not in card.text.split("=")[0]:
+                for name, value in words_of(card).pairs.items():
+                    scope.define(name, card, value)
+        scope.settle()
+
+    def _cards(self, body: Body, scope: Scope) -> Iterator[Card]:
+        """The cards of a body whose conditions hold."""
+        for item in body.items:
+            if isinstance(item, Card):
+                yield item
+            else:
+                chosen = self._chosen(item, scope)
+                if chosen is not None:
+                    yield from self._cards(chosen, scope)
+
+    def _chosen(self, branches: Branches, scope: Scope) -> Body | None:
+        for card, body in branches.branches:
+            if card is None:
+                return body
+            start = card.fields[0].end
+            condition = Field(card.text[start:].strip(), start, len(card.text))
+            try:
+                if scope.value(condition.text):
+                    return body
+            except ExpressionError as error:
+                self.problems.expression(error, card, condition, scope.names())
+        return None
+
+    def _plan(self, body: Body, scope: Scope) -> _Plan:
+        """A body's plan: made once, unless conditions make it depend on the instance."""
+        plan = self.plans.get(id(body))
+        if plan is None:
+            plan = _Plan()
+            seen: dict[str, Card] = {}
+            for card in self._cards(body, scope):
+                self._add(card, plan, seen)
+            if not any(isinstance(item, Branches) for item in body.items):
+                self.plans[id(body)] = plan
+        return plan
+
+    def _add(self, card: Card, plan: _Plan, seen: dict[str, Card]) -> None:
+        if card.kind.startswith("."):
+            if card.kind not in KNOWN_DOTS:
+                self.problems.say(
+                    "command-ignored",
+                    "note",
+                    card,
+                    card.fields[0],
+                    f"`{card.fields[0].text}` is not evaluated",
+                )
+            return
+        earlier = seen.setdefault(card.name, card)
+        if earlier is not card:
+            self.problems.say(
+                "duplicate-name", "error", card, card.fields[0],
+                f"`{card.fields[0].text}` stands twice in one scope, first at {earlier.place()}", "rename one",
+            )  # fmt: skip
+        if card.kind == "x":
+            call = self._call(card)
+            if call is not None:
+                plan.order.append(call)
+            return
+        maker_of = MAKERS.get(card.kind)
+        if maker_of is None:
+            self.problems.say("syntax", "error", card, card.fields[0], f"no element begins with `{card.kind}`")
+            return
+        maker = maker_of(card, self.problems)
+        if maker is not None:
+            plan.order.append(maker)
+
+    def _call(self, card: Card) -> _Call | None:
+        words: Words = words_of(card)
+        plain = tuple(w for w in words.plain if w.key not in ("params:", "params", "param:"))
+        if not plain:
+            self.problems.say("syntax", "error", card, None, f"`{card.text[:60]}` names no subcircuit")
+            return None
+        return _Call(card, plain[:-1], plain[-1], words.pairs)
+
+    def _expand(self, body: Body, context: Context, active: tuple[str, ...]) -> None:
+        for step in self._plan(body, context.scope).order:
+            if self.full:
+                return
+            if isinstance(step, _Call):
+                self._instance(step, context, active)
+            else:
+                element = step(context)
+                if element is not None:
+                    self.elements.append(element)
+            if len(self.elements) > MOST_ELEMENTS:
+                self._stop(step.card if isinstance(step, _Call) else body_card(body, self.deck))
+
+    def _stop(self, card: Card) -> None:
+        self.full = True
+        self.problems.say(
+            "syntax", "error", card, None, f"more than {MOST_ELEMENTS} elements; the rest is not elaborated",
+            "review one block at a time with --subckt",
+        )  # fmt: skip
+
+    def _instance(self, call: _Call, context: Context, active: tuple[str, ...]) -> None:
+        name = context.name(call.card)
+        definition = next((b.subckts[call.subckt.key] for b in context.bodies if call.subckt.key in b.subckts), None)
+        nodes = tuple(context.node(f.key) for f in call.nodes)
+        fault = self._fault(call, definition, context, active)
+        if definition is None or fault:
+            origin = Origin(call.card, context.path)
+            self.elements.append(Device(name, "x", nodes, (), call.subckt.key, fault or "undefined", origin))
+            return
+        path = (*context.path, name)
+        scope = context.scope
+        if (
+            definition.defaults
+            or call.arguments
+            or any(not isinstance(i, Card) or i.kind == ".param" for i in definition.body.items)
+        ):
+            scope = Scope(context.scope, self.functions, self.problems)
+            for key, value in definition.defaults.items():
+                if key not in call.arguments:
+                    scope.define(key, definition.card, value)
+            for key, value in call.arguments.items():
+                scope.define(key, call.card, value, context.scope)
+            self._parameters(definition.body, scope)
+        pins = tuple(zip(definition.pins, nodes, strict=True))
+        origin = Origin(call.card, context.path)
+        self.instances.append(Instance(name, definition.name, pins, origin, definition.card, definition.comments))
+        bodies = (definition.body, *context.bodies)
+        inner = Context(name + ".", path, dict(pins), self.everywhere, scope, bodies, self.problems)
+        self._expand(definition.body, inner, (*active, definition.name))
+
+    def _fault(self, call: _Call, definition: Definition | None, context: Context, active: tuple[str, ...]) -> str:
+        """Why an instance cannot be expanded, '' where it can; the finding is made here."""
+        if definition is None:
+            known = [name for body in context.bodies for name in body.subckts]
+            self.problems.unknown_model(call.card, call.subckt, known, "subcircuit")
+            return "undefined"
+        if len(call.nodes) != len(definition.pins):
+            self.problems.say(
+                "pin-count", "error", call.card, call.card.fields[0],
+                f"`{call.card.fields[0].text}` has {len(call.nodes)} nodes, subcircuit `{definition.name}` has "
+                f"{len(definition.pins)} pins: {' '.join(definition.pins)}", "give each pin one node",
+            )  # fmt: skip
+            return "wrong number of nodes"
+        if definition.name in active or len(active) >= DEEPEST_INSTANCE:
+            self.problems.say(
+                "syntax", "error", call.card, call.subckt,
+                f"subcircuit `{definition.name}` contains itself" if definition.name in active
+                else f"instances nested deeper than {DEEPEST_INSTANCE}",
+            )  # fmt: skip
+            return "recursive"
+        return ""
+
+
+def body_card(body: Body, deck: Deck) -> Card:
+    """A card to point at for a body as a whole."""
+    return next((item for item in body.items if isinstance(item, Card)), deck.cards[0])
+
+
+KNOWN_DOTS = frozenset(
+    (*KINDS_OF_ANALYSIS, ".param", ".func", ".model", ".global", ".temp", ".end", ".title", ".width", ".csparam")
+)
