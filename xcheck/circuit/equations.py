@@ -40,7 +40,8 @@ class Short:
 class Equations:
     """A(s) = G + s C with N unknowns and E structural entries, each position once.
 
-    unknowns: their names, `v(node)`, `i(element)` or `x(element)`; the first `node_count` are voltages.
+    unknowns: their names, `v(node)`, `i(element)`, `x(element)` for the output of a controlled source, or
+    `v(node,node)`; the first `node_count` are voltages of nodes.
     node: flat node to the index of its voltage, -1 for ground and for what a dead source ties to it.
     branch: element to the index of its current, which is also the index of its voltage law.
     output: controlled source to (unknown, equation) of its output quantity: the unknown is the output less
@@ -73,19 +74,21 @@ class Equations:
         return result
 
 
-def assemble(
-    elements: Iterable[Element], shorts: Sequence[Short] = (), explicit: Collection[str] = ()
-) -> Equations:
+def assemble(elements: Iterable[Element], shorts: Sequence[Short] = (), explicit: Collection[str] = ()) -> Equations:
     """The equations of a circuit.
 
     A dead voltage source joins its two nodes, unless a controlled source reads its current: then it is a
-    branch of zero volt. Devices are left out. explicit: controlled sources that get an entry in `output`.
+    branch of zero volt. Devices are left out. explicit: controlled sources that get an entry in `output`, and
+    unknowns of their own for the voltages that they read.
     Raises CallError where a controlled source reads the current of something that has none, or a value is
     no finite number.
     """
     kept = [element for element in elements if not isinstance(element, Device)]
     sensed = {t.source for e in kept if isinstance(e, Controlled) for t in e.terms if t.source}
     build = _Assembly(kept, shorts, sensed)
+    for element in kept:
+        if isinstance(element, Controlled) and element.name in explicit:
+            build.differences(element)
     for short in shorts:
         build.branch_between(short.name, short.nodes)
     inductances: dict[str, float] = {}
@@ -126,6 +129,7 @@ class _Assembly:
                 self.names[index] = f"v({name})"
         self.branch: dict[str, int] = {}
         self.output: dict[str, tuple[int, int]] = {}
+        self.difference: dict[tuple[int, int], tuple[int, float]] = {}
         self.rows: list[int] = []
         self.columns: list[int] = []
         self.static: list[float] = []
@@ -148,6 +152,24 @@ class _Assembly:
         self.names.append(name)
         return len(self.names) - 1
 
+    def differences(self, element: Controlled) -> None:
+        """Makes an unknown of every voltage between two moving nodes that an explicit source reads. What lies
+        across the pair is then written with it: behind much loop gain the two voltages are one to many digits,
+        and their difference, taken later, would be rounding."""
+        for term in element.terms:
+            pair = (self.node[term.positive], self.node[term.negative])
+            if term.source or min(pair) < 0 or pair[0] == pair[1] or pair in self.difference:
+                continue
+            own = self.unknown(f"v({term.positive},{term.negative})")
+            for column, sign in ((pair[0], 1.0), (pair[1], -1.0), (own, -1.0)):
+                self.add(own, column, sign)
+            self.difference[pair] = (own, 1.0)
+            self.difference[pair[1], pair[0]] = (own, -1.0)
+
+    def voltage(self, a: int, b: int) -> tuple[tuple[int, float], ...]:
+        """The unknowns that make up the voltage from a to b, each with its sign."""
+        return (self.difference[a, b],) if (a, b) in self.difference else ((a, 1.0), (b, -1.0))
+
     def branch_between(self, name: str, nodes: tuple[str, str]) -> int:
         """A branch current from nodes[0] to nodes[1] through the element, V(nodes[0]) - V(nodes[1]) = 0."""
         index = self.unknown(f"i({name})")
@@ -155,7 +177,8 @@ class _Assembly:
         a, b = (self.node[n] for n in nodes)
         for node, sign in ((a, 1.0), (b, -1.0)):
             self.add(node, index, sign)
-            self.add(index, node, sign)
+        for column, sign in self.voltage(a, b):
+            self.add(index, column, sign)
         self.tie(a, b)
         return index
 
@@ -163,10 +186,9 @@ class _Assembly:
         a, b = (self.node[n] for n in nodes)
         if a == b:
             return
-        self.add(a, a, static, dynamic)
-        self.add(b, b, static, dynamic)
-        self.add(a, b, -static, -dynamic)
-        self.add(b, a, -static, -dynamic)
+        for column, sign in self.voltage(a, b):
+            self.add(a, column, sign * static, sign * dynamic)
+            self.add(b, column, -sign * static, -sign * dynamic)
         if static or dynamic:
             self.tie(a, b, capacitive=not static)
 
@@ -189,9 +211,7 @@ class _Assembly:
         try:
             (a, la), (b, lb) = ((self.branch[name], inductances[name]) for name in element.inductors)
         except KeyError as missing:
-            raise CallError(
-                f"{element.name} couples {missing.args[0]}, which is no inductor of the circuit"
-            ) from None
+            raise CallError(f"{element.name} couples {missing.args[0]}, which is no inductor of the circuit") from None
         mutual = element.factor * float(np.sqrt(la * lb))
         self.add(a, b, 0.0, -mutual)
         self.add(b, a, 0.0, -mutual)
@@ -215,21 +235,16 @@ class _Assembly:
             for column, gain in self.control(element, term):
                 for row, sign in into:
                     self.add(row, column, sign * gain)
-            if (
-                not voltage
-                and not term.source
-                and {self.node[term.positive], self.node[term.negative]} == {a, b}
-            ):
+            if not voltage and not term.source and {self.node[term.positive], self.node[term.negative]} == {a, b}:
                 self.tie(a, b)  # a current set by the voltage across it is a conductance
 
     def control(self, element: Controlled, term: Term) -> tuple[tuple[int, float], ...]:
         """The unknowns that a term reads, each with its gain."""
         if not term.source:
-            return (self.node[term.positive], term.gain), (self.node[term.negative], -term.gain)
+            pair = self.voltage(self.node[term.positive], self.node[term.negative])
+            return tuple((column, sign * term.gain) for column, sign in pair)
         if term.source not in self.branch:
-            raise CallError(
-                f"{element.name} reads the current of {term.source}, which is no voltage source here"
-            )
+            raise CallError(f"{element.name} reads the current of {term.source}, which is no voltage source here")
         return ((self.branch[term.source], term.gain),)
 
     def equations(self) -> Equations:
@@ -256,9 +271,7 @@ class _Assembly:
         )
 
 
-def _joined_nodes(
-    elements: Sequence[Element], shorts: Sequence[Short], sensed: Collection[str]
-) -> dict[str, int]:
+def _joined_nodes(elements: Sequence[Element], shorts: Sequence[Short], sensed: Collection[str]) -> dict[str, int]:
     """Flat node to unknown, nodes tied by dead voltage sources sharing one, -1 for ground."""
     parent: dict[str, str] = {GROUND: GROUND}
 

@@ -14,12 +14,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from xcheck.circuit.arrays import Complex
+from xcheck.circuit.arrays import Complex, Real
 from xcheck.circuit.equations import Equations, Index
 from xcheck.errors import SingularCircuit
 
-LEAST_PIVOT = 1.0
-"""Of the largest entry in its column, all scaled: a pivot that has shrunk below gives way to that entry."""
+LEAST_PIVOT = 0.1
+"""Of the largest entry in its column, all scaled: a pivot that shrinks below gives way to that entry."""
 
 TRIALS = 3
 """How often the order is sought anew for pivots that a trial factorisation has changed."""
@@ -87,7 +87,8 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
     inverse at (unknowns, rows), each (W,). Raises SingularCircuit where no set of pivots exists."""
     size = equations.size
     owner = matched(equations, values)  # equation -> the unknown that it is solved for
-    scaled = _scaled(equations, values, owner)
+    by_row, by_column = scales(equations, values, owner)
+    scaled = values * by_row[equations.rows] * by_column[equations.columns]
     for _ in range(TRIALS):
         position = minimum_degree(
             np.concatenate([owner[equations.rows], owner[rows]]),
@@ -100,9 +101,7 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
             break
     row_at, column_at = position[owner[equations.rows]], position[equations.columns]
     wanted_row, wanted_column = position[unknowns], position[owner[rows]]
-    structure, height = filled(
-        np.concatenate([row_at, wanted_row]), np.concatenate([column_at, wanted_column]), size
-    )
+    structure, height = filled(np.concatenate([row_at, wanted_row]), np.concatenate([column_at, wanted_column]), size)
     count = np.array([len(s) for s in structure], dtype=np.int64)
     below = np.array([i for s in structure for i in s], dtype=np.int64)
     table = _Places(size, np.repeat(np.arange(size), count) * size + below)
@@ -139,9 +138,9 @@ def matched(equations: Equations, values: Complex) -> Index:
     return owner
 
 
-def _scaled(equations: Equations, values: Complex, owner: Index) -> Complex:
-    """The entries, equations and unknowns scaled so that pivots are 1 and all others at most 1: the scales
-    are the longest paths in the graph of the entries' logarithms, which has no rising loop because the
+def scales(equations: Equations, values: Complex, owner: Index) -> tuple[Real, Real]:
+    """Factors for the equations and for the unknowns, (N,) each, that make pivots 1 and all other entries at
+    most 1: longest paths in the graph of the entries' logarithms, which has no rising loop because the
     matching is the best."""
     size = equations.size
     there = np.flatnonzero(np.abs(values) > 0)
@@ -150,15 +149,13 @@ def _scaled(equations: Equations, values: Complex, owner: Index) -> Complex:
     pivot = np.empty(size)
     pivot[row[row == column]] = log[row == column]
     weight = log - pivot[row]
-    scale = np.zeros(size)  # of the equation solved for an unknown, over that of the unknown
+    path = np.zeros(size)
     for _ in range(size):
-        before = scale.copy()
-        np.maximum.at(scale, column, scale[row] + weight)
-        if (scale <= before + 1e-9).all():
+        before = path.copy()
+        np.maximum.at(path, column, path[row] + weight)
+        if (path <= before + 1e-9).all():
             break
-    result = np.zeros(len(values), dtype=np.complex128)
-    result[there] = np.exp(weight + scale[row] - scale[column] + 1j * np.angle(values[there]))
-    return result
+    return np.exp(path - pivot)[owner], np.exp(-path)
 
 
 def _stable_owner(equations: Equations, scaled: Complex, owner: Index, position: Index) -> Index:
@@ -193,9 +190,7 @@ def minimum_degree(rows: Index, columns: Index, size: int) -> Index:
     pattern = coo_array((np.ones(len(ends)), (ends, others)), shape=(size, size)).tocsc()
     pattern.data[:] = 1.0
     pattern.setdiag(2.0 + np.diff(pattern.indptr))  # dominant, so that the order is by the pattern alone
-    factors = splu(
-        pattern, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True}
-    )
+    factors = splu(pattern, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
     return np.asarray(factors.perm_c, dtype=np.int64)
 
 

@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 
 from xcheck.circuit.arrays import Complex, Real
 from xcheck.circuit.equations import Equations, Index, parts, with_least_conductance
-from xcheck.circuit.ordering import Pattern, pivot_order
+from xcheck.circuit.ordering import Pattern, matched, pivot_order, scales
 from xcheck.errors import SingularCircuit
 
 if TYPE_CHECKING:
@@ -27,7 +27,7 @@ if TYPE_CHECKING:
 LARGEST_RESIDUAL = 1e-10
 """Of an equation, against the sum of the magnitudes in it, where rounding alone leaves about 1e-15."""
 
-LARGEST_ERROR = 1e-9
+LARGEST_ERROR = 1e-8
 """Of an entry of the inverse, relative, against the solution for its right-hand side."""
 
 LARGEST_SUM = 1e13
@@ -215,10 +215,13 @@ def by_column(equations: Equations, frequency: float, unknowns: Index, rows: Ind
 
     size = equations.size
     values = equations.values(np.array([frequency]))[:, 0]
-    matrix = coo_array((values, (equations.rows, equations.columns)), shape=(size, size)).tocsc()
+    at = (equations.rows, equations.columns)
+    matrix = coo_array((values, at), shape=(size, size)).tocsc()
     magnitudes = abs(matrix)
+    by_row, by_unknown = scales(equations, values, matched(equations, values))
+    scaled = values * by_row[equations.rows] * by_unknown[equations.columns]
     try:
-        factors = splu(matrix)
+        factors = splu(coo_array((scaled, at), shape=(size, size)).tocsc())
     except RuntimeError:
         raise SingularCircuit(_undetermined(equations, matrix, frequency)) from None
     result = np.zeros(len(rows), dtype=np.complex128)
@@ -229,11 +232,12 @@ def by_column(equations: Equations, frequency: float, unknowns: Index, rows: Ind
         now = (turn >= start) & (turn < start + 16)
         right = np.zeros((size, 16), dtype=np.complex128)
         right[wanted[now], turn[now] - start] = 1.0
-        columns = np.asarray(factors.solve(right))
-        columns += factors.solve(np.asarray(right - matrix @ columns))
+        columns, off = np.zeros_like(right), right
+        for _ in range(3):
+            columns += by_unknown[:, None] * np.asarray(factors.solve(by_row[:, None] * off))
+            off = right - np.asarray(matrix @ columns)
         size_of = np.asarray(magnitudes @ np.abs(columns))
-        off = np.abs(np.asarray(right - matrix @ columns))
-        enough = off <= LARGEST_RESIDUAL * (size_of + np.abs(right))
+        enough = np.abs(off) <= LARGEST_RESIDUAL * (size_of + np.abs(right))
         if not (enough.all() and (size_of[right != 0] < LARGEST_SUM).all()):
             raise SingularCircuit(_undetermined(equations, matrix, frequency))
         here = now[column] & (part[unknowns] == part[rows])  # across parts nothing answers
