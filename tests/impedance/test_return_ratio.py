@@ -258,3 +258,116 @@ def test_ports_that_share_a_terminal_are_measured_apart() -> None:
     answers = return_ratios(doubled, FREQUENCY)
     assert answers["u2.in"].impedance == near(ratio_of(both, "u1.in").impedance)  # type: ignore[union-attr]
     assert answers["u1.in"].impedance == near(answers["u2.in"].impedance)  # type: ignore[union-attr]
+
+
+def test_loop_gain_at_direct_current() -> None:
+    """Capacitors open: an ideal integrator's loop is open at DC but for Rid; a real one's is not."""
+    text = """
+        v1 in 0
+        r1 in m 1e4
+        c1 m out 1e-9
+        rid m 0 1e6
+        e1 e 0 0 m 1e5
+        ro e out 50
+        rl out 0 1e4
+    """
+    members = [amplifier("e1", ("0", "m", "out"))]
+    ports = [PortAt("in", "input", ("r1",))]
+    parted = partition(text, {"u1": (members, ports)}, ["in"])
+    assert np.abs(loop_gains(parted, np.array([0.0]))["e1"]).max() == 0
+    assert ratio_of(parted, "u1.in", np.array([0.0])).impedance == near([1e4 + 1e6])
+    leaky = partition(text + "rf m out 1e6", {"u1": (members, ports)}, ["in"])
+    low = 1e4 * 1e6 / (1e4 + 1e6)
+    seen = 1 / (1 / 1e4 + 1 / (1e6 + low))
+    assert loop_gains(leaky, np.array([0.0]))["e1"] == near([1e5 * seen / (seen + 50) * low / (low + 1e6)])
+
+
+def test_loop_gain_of_positive_feedback_is_negative() -> None:
+    text = """
+        rb out p 9e3
+        ra p 0 1e3
+        e1 out 0 p 0 1e3
+    """
+    parted = partition(text, {"u1": ([amplifier("e1", ("p", "0", "out"))], [])})
+    assert loop_gains(parted, np.array([0.0, 1e3]))["e1"] == near([-100.0, -100.0])
+
+
+def test_an_integrating_gain_has_an_infinite_loop_at_direct_current() -> None:
+    """A transconductance into a capacitor alone: without its source the node floats, and only the least
+    conductance of 1e-12 S stands in for what a real part leaks."""
+    text = """
+        g1 0 out in out 1e-3
+        c1 out 0 1e-9
+        v1 in 0
+    """
+    parted = partition(text, {"u1": ([amplifier("g1", ("in", "out", "out"))], [])}, ["in"])
+    frequency = np.array([0.0, 1e3])
+    loop = loop_gains(parted, frequency)["g1"]
+    assert loop[0] == near(1e-3 / 1e-12, 1e-6)
+    assert loop[1] == near(1e-3 / (2j * np.pi * 1e3 * 1e-9))
+
+
+def test_two_amplifiers_in_one_loop_give_one_impedance() -> None:
+    """Blackman's formula holds for either source; the impedance is the circuit's own."""
+    text = """
+        v1 in 0
+        r1 in m 1e4
+        rf m out 1e4
+        ea a 0 m 0 -1e3
+        ra a b 1e3
+        rb b 0 1e4
+        eb c 0 b 0 1e2
+        ro c out 50
+    """
+    ports = [PortAt("in", "input", ("r1",)), PortAt("out", "output", ("ro", "rf"))]
+    answers = []
+    for gain in ("ea", "eb"):
+        parted = partition(text, {"s": ([amplifier(gain, ("0", "m", "out"))], ports)}, ["in"])
+        answers.append(return_ratios(parted, FREQUENCY))
+    for subject in ("s.in", "s.out"):
+        first, second = (answer[subject] for answer in answers)
+        assert isinstance(first, ReturnRatio)
+        assert isinstance(second, ReturnRatio)
+        assert first.impedance == near(second.impedance)
+        assert (first.source, second.source) == ("ea", "eb")
+    total = 1e3 * 1e4 / 1.1e4 * 1e2
+    assert answers[0]["s.in"].impedance == near(np.full(3, 1e4 + (1e4 + 50) / (1 + total)))  # type: ignore[union-attr]
+
+
+def test_a_part_without_solution_costs_its_own_ports_alone() -> None:
+    text = """
+        v1 in 0
+        r1 in m 1e4
+        rf m out 1e4
+        e1 out 0 0 m 1e5
+        va a 0
+        r2 a m2 1e4
+        r3 m2 o2 1e4
+        e2 o2 0 0 m2 1e5
+        e3 o2 0 0 m2 1e5
+    """
+    stages = {
+        "u1": ([amplifier("e1", ("0", "m", "out"))], [PortAt("in", "input", ("r1",))]),
+        "u2": ([amplifier("e2", ("0", "m2", "o2"))], [PortAt("a", "input", ("r2",))]),
+    }
+    answers = return_ratios(partition(text, stages, ["in", "a"]), FREQUENCY)
+    assert answers["u1.in"].impedance == near(np.full(3, 1e4 + 1e4 / (1 + 1e5)))  # type: ignore[union-attr]
+    assert "undetermined" in str(answers["u2.a"])
+    assert set(loop_gains(partition(text, stages, ["in", "a"]), FREQUENCY)) == {"e1"}
+
+
+def test_what_cannot_be_cut_is_said() -> None:
+    parted = inverting(1e5)
+    amplifiers = parted.stages[0].amplifiers
+    odd = [PortAt("in", "input", ("r1", "v1")), PortAt("0", "input", ("rl",))]
+    text = "\n".join(["v2 in out"])
+    answers = return_ratios(partition_of(parted.circuit.elements, {"u1": (amplifiers, odd)}, ["in"]), FREQUENCY)
+    assert answers["u1.0"] == "the port is ground"
+    assert answers["u1.in"].impedance == near(np.zeros(3))  # type: ignore[union-attr]
+    bridged = [*parted.circuit.elements, *elements_of(text)]
+    held = partition_of(bridged, {"u1": (amplifiers, [PortAt("out", "output", ("ro", "rf"))])}, ["in"])
+    assert "held by a voltage source" in str(return_ratios(held, FREQUENCY)["u1.out"])
+    sensed = [*parted.circuit.elements, *elements_of("f9 in 0 rl 1")]
+    unread = partition_of(sensed, {"u1": (amplifiers, [PortAt("in", "input", ("r1",))])}, ["in"])
+    assert "f9 reads the current of rl" in str(return_ratios(unread, FREQUENCY)["u1.in"])
+    assert loop_gains(unread, FREQUENCY) == {}

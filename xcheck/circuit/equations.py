@@ -219,9 +219,9 @@ class _Assembly:
     def controlled(self, element: Controlled, explicit: bool) -> None:
         a, b = (self.node[n] for n in element.nodes)
         voltage = element.kind in "eh"
+        reads = [pair for term in element.terms for pair in self.control(element, term)]
         into: list[tuple[int, float]]  # equations that the output quantity enters, and with which factor
         into = [(self.branch[element.name], -1.0)] if voltage else [(a, 1.0), (b, -1.0)]
-        reads = [pair for term in element.terms for pair in self.control(element, term)]
         if explicit and voltage and a >= 0 > b and all(column != a for column, _ in reads):
             self.output[element.name] = (a, self.branch[element.name])
         elif explicit:
@@ -231,12 +231,12 @@ class _Assembly:
                 self.add(row, own, sign)
             self.add(own, own, 1.0)
             into = [(own, -1.0)]
-        for term in element.terms:
-            for column, gain in self.control(element, term):
-                for row, sign in into:
-                    self.add(row, column, sign * gain)
-            if not voltage and not term.source and {self.node[term.positive], self.node[term.negative]} == {a, b}:
-                self.tie(a, b)  # a current set by the voltage across it is a conductance
+        for column, gain in reads:
+            for row, sign in into:
+                self.add(row, column, sign * gain)
+        across = [{self.node[t.positive], self.node[t.negative]} for t in element.terms if not t.source]
+        if not (voltage or explicit) and {a, b} in across:
+            self.tie(a, b)  # a current set by the voltage across it is a conductance
 
     def control(self, element: Controlled, term: Term) -> tuple[tuple[int, float], ...]:
         """The unknowns that a term reads, each with its gain."""
