@@ -42,6 +42,8 @@ def test_engineering(value: float, unit: str, text: str) -> None:
         (1e6, "1 MOhm"),
         (12345.6, "12.3456 kOhm"),
         (100, "100 Ohm"),
+        (1e-21, "1e-21 Ohm"),
+        (1.5e20, "1.5e+20 Ohm"),
     ],
 )
 def test_shortest(value: float, text: str) -> None:

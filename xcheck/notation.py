@@ -77,9 +77,12 @@ def _write(value: float, unit: str, digits: int, symbols: bool, *, keep_zeros: b
     exponent = math.floor(math.log10(abs(rounded)))
     step = 3 * (exponent // 3)
     if step not in PREFIXES:
-        return f"{rounded:.{digits - 1}e} {shown}".rstrip()
+        figures, _, power = f"{rounded:.{digits - 1}e}".partition("e")
+        return f"{figures if keep_zeros else _trimmed(figures)}e{power} {shown}".rstrip()
     prefix = SYMBOLS.get(PREFIXES[step], PREFIXES[step]) if symbols else PREFIXES[step]
     number = f"{rounded / 10.0**step:.{max(0, digits - 1 - (exponent - step))}f}"
-    if not keep_zeros and "." in number:
-        number = number.rstrip("0").rstrip(".")
-    return f"{number} {prefix}{shown}".rstrip()
+    return f"{number if keep_zeros else _trimmed(number)} {prefix}{shown}".rstrip()
+
+
+def _trimmed(number: str) -> str:
+    return number.rstrip("0").rstrip(".") if "." in number else number
