@@ -1,6 +1,6 @@
 """The flat circuit: elements with evaluated values, each knowing the card that it came from."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Literal
 
@@ -108,7 +108,11 @@ Element = Passive | Coupling | Source | Controlled | Device
 class Instance:
     """An expanded subcircuit instance: flat name, subcircuit name, (pin, flat node) pairs in pin order, the
     instance card with its own path (origin), the `.subckt` card, and the comment lines directly above and
-    below that card."""
+    below that card.
+
+    local: its elements with the pins as nodes and names relative to it; one and the same object for all
+    instances of a subcircuit whose parameters have the same values, so that it is worth looking at once.
+    """
 
     name: str
     subckt: str
@@ -116,6 +120,7 @@ class Instance:
     origin: Origin
     definition: Card
     comments: tuple[Comment, ...] = ()
+    local: "tuple[Element, ...]" = field(default=(), repr=False, compare=False)
 
 
 @dataclass(frozen=True, slots=True)

@@ -15,7 +15,8 @@ from xcheck.elaboration.words import braced
 
 @dataclass(frozen=True)
 class Context:
-    """One instance's surroundings. bodies: the bodies whose definitions can be seen, innermost first."""
+    """One instance's surroundings. bodies: the bodies whose definitions can be seen, innermost first; key: equal
+    for instances whose elements have equal values."""
 
     prefix: str
     path: tuple[str, ...]
@@ -24,6 +25,7 @@ class Context:
     scope: Scope
     bodies: Sequence[Body]
     problems: Problems
+    key: tuple[object, ...] = ()
 
     def node(self, word: str) -> str:
         """A node's flat name; `word` in lower case."""

@@ -1,7 +1,7 @@
 """Elaboration: bodies expanded instance by instance into one flat circuit."""
 
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from xcheck.circuit.elements import Analysis, Circuit, Device, Element, Instance, Origin
 from xcheck.deck.cards import Card, Deck, Field
@@ -67,6 +67,7 @@ class _Elaboration:
         self.elements: list[Element] = []
         self.instances: list[Instance] = []
         self.plans: dict[int, _Plan] = {}
+        self.locals: dict[tuple[object, ...], tuple[Element, ...]] = {}
         self.full = False
 
     def circuit(self, subckt: str | None) -> Circuit:
@@ -256,12 +257,30 @@ class _Elaboration:
             for key, value in call.arguments.items():
                 scope.define(key, call.card, value, context.scope)
             self._parameters(definition.body, scope)
-        pins = tuple(zip(definition.pins, nodes, strict=True))
-        origin = Origin(call.card, context.path)
-        self.instances.append(Instance(name, definition.name, pins, origin, definition.card, definition.comments))
+        identity = (id(definition), scope.values() if scope is not context.scope else (), context.key)
+        pins = dict(zip(definition.pins, nodes, strict=True))
         bodies = (definition.body, *context.bodies)
-        inner = Context(name + ".", path, dict(pins), self.everywhere, scope, bodies, self.problems)
+        inner = Context(name + ".", path, pins, self.everywhere, scope, bodies, self.problems, identity)
+        local = self._local(definition, inner, (*active, definition.name))
+        self.instances.append(
+            Instance(
+                name, definition.name, tuple(pins.items()), Origin(call.card, context.path),
+                definition.card, definition.comments, local,
+            )
+        )  # fmt: skip
         self._expand(definition.body, inner, (*active, definition.name))
+
+    def _local(self, definition: Definition, inner: Context, active: tuple[str, ...]) -> tuple[Element, ...]:
+        """The instance's elements as seen from inside; made once for all instances of the same key."""
+        found = self.locals.get(inner.key)
+        if found is None:
+            outside = self.elements, self.instances
+            self.elements, self.instances = [], []
+            pins = {pin: pin for pin in definition.pins}
+            self._expand(definition.body, replace(inner, prefix="", path=(), pins=pins), active)
+            found = self.locals[inner.key] = tuple(self.elements)
+            self.elements, self.instances = outside
+        return found
 
     def _fault(self, call: _Call, definition: Definition | None, context: Context, active: tuple[str, ...]) -> str:
         """Why an instance cannot be expanded, '' where it can; the finding is made here."""

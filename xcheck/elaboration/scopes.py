@@ -56,6 +56,10 @@ class Scope:
         own = [*self._values, *self._waiting]
         return own + (self.parent.names() if self.parent is not None else [])
 
+    def values(self) -> tuple[tuple[str, float], ...]:
+        """Names and values of this scope alone, once settled."""
+        return tuple(self._values.items())
+
     def lookup(self, name: str) -> float:
         """The value of a parameter. Raises KeyError, or ExpressionError where it has none."""
         if name in self._values:
