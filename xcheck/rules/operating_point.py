@@ -1,0 +1,131 @@
+"""What ngspice says of the operating point, and of the run as a whole."""
+
+import re
+from collections.abc import Iterator
+
+from xcheck.finding import Finding
+from xcheck.notation import engineering
+from xcheck.place import Place
+from xcheck.reviewed import Evidence
+from xcheck.stages.types import Amplifier
+
+MARGIN_VOLT = 0.05
+MARGIN_OF_SPAN = 0.01
+"""An output nearer to a supply than the lesser of the two is at it: rail-to-rail outputs of ordinary parts
+come within tens of millivolts under light load (common practice), and no output works there."""
+
+OPERATING_POINT = "operating point"
+
+NAME = re.compile(r"[a-z0-9_.#+\-]+")
+
+
+def operating_point_fails(evidence: Evidence) -> Iterator[Finding]:
+    """ngspice found no operating point, so there is nothing to take small-signal values at."""
+    simulation = evidence.simulation
+    if simulation is None or simulation.failed_step != OPERATING_POINT:
+        return
+    said = simulation.failure.strip() or "nothing on why"
+    place, named = _named_in(evidence, (simulation.failure, *simulation.messages))
+    where = f" It names {named}." if named else ""
+    yield Finding(
+        "operating-point-fails",
+        "error",
+        place,
+        f"ngspice finds no operating point; it says: {said}.{where}",
+        subject=named,
+        advice="look for nodes without a DC path, loops of voltage sources, and positive feedback",
+    )
+
+
+def simulation_fails(evidence: Evidence) -> Iterator[Finding]:
+    """ngspice is there and the run came to nothing for another reason than the operating point."""
+    simulation = evidence.simulation
+    if simulation is None or not simulation.failed_step or simulation.failed_step == OPERATING_POINT:
+        return
+    said = simulation.failure.strip() or "nothing on why"
+    place, named = _named_in(evidence, (simulation.failure,))
+    yield Finding(
+        "simulation-fails",
+        "warning",
+        place,
+        f"no impedance was simulated; ngspice failed ({simulation.failed_step}) and says: {said}",
+        subject=named,
+        advice="the analytic values stand unchecked until ngspice can run this deck",
+    )
+
+
+def not_simulated(evidence: Evidence) -> Iterator[Finding]:
+    """ngspice was wanted and is not there."""
+    ports = sum(len(stage.ports) for stage in evidence.partition.stages)
+    absent = evidence.simulation is None or not evidence.simulation.engine.available
+    if not (ports and absent) or evidence.options.engine == "none":
+        return
+    why = "" if evidence.simulation is None else evidence.simulation.engine.reason
+    yield Finding(
+        "not-simulated",
+        "note",
+        _first_line(evidence),
+        "no impedance was simulated: ngspice is not available" + (f" ({why})" if why else ""),
+        advice="install ngspice, and run the review again; `xcheck engine` says what was looked for",
+    )
+
+
+def output_at_rail(evidence: Evidence) -> Iterator[Finding]:
+    """An output at, near or (a linear model cannot clip) beyond one of its supplies."""
+    for amplifier in evidence.partition.amplifiers:
+        seen = rail_of(evidence, amplifier)
+        if seen:
+            yield Finding(
+                "output-at-rail",
+                "error",
+                amplifier.place,
+                f"the output of {amplifier.name}, node `{amplifier.output}`, is at {seen} (operating point): "
+                "a real amplifier saturates there, and small-signal values taken there mean nothing",
+                subject=amplifier.name,
+                cause="output-at-rail",
+                advice="look at the DC level of the source, the bias of the inputs and the gain at DC",
+            )
+
+
+def rail_of(evidence: Evidence, amplifier: Amplifier) -> str:
+    """How an amplifier's output stands to the supply that it has reached, in words; '' where it is free."""
+    simulation = evidence.simulation
+    positive, negative = amplifier.positive_supply, amplifier.negative_supply
+    if simulation is None or simulation.failed_step == OPERATING_POINT or not positive or not negative:
+        return ""
+    volts = {"0": 0.0, **simulation.operating_point}
+    if not {positive, negative, amplifier.output} <= volts.keys():
+        return ""
+    output, high, low = volts[amplifier.output], volts[positive], volts[negative]
+    if not high > low:
+        return ""
+    margin = min(MARGIN_VOLT, MARGIN_OF_SPAN * (high - low))
+    for supply, level, beyond in ((positive, high, output - high), (negative, low, low - output)):
+        if beyond > -margin:
+            how = "beyond" if beyond > margin else "at"
+            return f"{engineering(output, 'V')}, {how} its supply `{supply}` of {engineering(level, 'V')}"
+    return ""
+
+
+def _named_in(evidence: Evidence, texts: tuple[str, ...]) -> tuple[Place, str]:
+    """The first element or node that some text of ngspice's names, with a place in the user's text; else the
+    deck's first line and ''."""
+    circuit = evidence.circuit
+    by_node: dict[str, str] = {}
+    for element in circuit.elements:
+        for node in element.nodes:
+            by_node.setdefault(node, element.name)
+    for text in texts:
+        for word in NAME.findall(text.lower()):
+            name = word.strip(".-+").removesuffix("#branch")
+            # ngspice writes r.x1.r3 for the element that is x1.r3 here
+            for candidate in (name, name.partition(".")[2]):
+                if candidate in circuit.by_name and len(candidate) > 1:
+                    return circuit.by_name[candidate].origin.card.place(), candidate
+            if name in by_node and name != "0" and f"node {name}" in text.lower():
+                return circuit.by_name[by_node[name]].origin.card.place(), name
+    return _first_line(evidence), ""
+
+
+def _first_line(evidence: Evidence) -> Place:
+    return Place(evidence.deck.path, 1, 1, 1 + len(evidence.deck.title))
