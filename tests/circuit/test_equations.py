@@ -6,7 +6,8 @@ from elements_by_hand import NOWHERE, by_current, by_voltage, c, i, k, l, r, v
 
 from xcheck.circuit.arrays import Complex
 from xcheck.circuit.elements import Device, Element
-from xcheck.circuit.equations import Equations, Short, assemble, with_least_conductance
+from xcheck.circuit.equations import Equations, Short, assemble
+from xcheck.circuit.parts import with_least_conductance
 from xcheck.errors import CallError
 
 

@@ -11,8 +11,7 @@ from xcheck.circuit.arrays import Complex, Real
 from xcheck.circuit.elements import Element
 from xcheck.circuit.equations import Equations, Short, assemble
 from xcheck.circuit.ordering import matched, pivot_order
-from xcheck.circuit.parts import inverse_by_part
-from xcheck.circuit.solution import by_column, inverse_entries, residual, selected_inverse
+from xcheck.circuit.solution import by_column, inverse_by_part, inverse_entries, residual, selected_inverse
 from xcheck.errors import SingularCircuit
 
 

@@ -6,7 +6,7 @@ modified nodal approach to network analysis, IEEE Trans. CAS-22, 1975). All inde
 """
 
 from collections.abc import Collection, Iterable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,8 +24,9 @@ BRANCH_BELOW_OHM = 1e3
 """Resistors below this get a branch current of their own. As a conductance they would drown what hangs on the
 node behind them: 1 S and 1e-16 S add up to 1 S in double precision."""
 
-LEAST_CONDUCTANCE = 1e-12
-"""Siemens, from one node of every part without a path to ground; the value that ngspice calls gmin."""
+CONDUCTOR, CAPACITOR, CURRENT_SOURCE = range(3)
+"""What joins two nodes: a voltage law or a conductance at all frequencies, above DC only, or the output of a
+controlled source that gives a current, whatever the voltage."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,8 +48,8 @@ class Equations:
     output: controlled source to (unknown, equation) of its output quantity: the unknown is the output less
     the gains times what the source reads, so a unit on the right-hand side adds a unit to the output.
     rows, columns: (E,) positions; conductance (S, or V/A and ratios), capacitance (F, H): (E,).
-    paths: (P, 2) pairs of voltages tied by an element, `node_count` for ground; capacitive: (P,) whether only
-    above DC.
+    paths: (P, 2) pairs of nodes that an element joins, `node_count` for ground, those of the shorts first;
+    path_kind: (P,) what the element is, CONDUCTOR, CAPACITOR or CURRENT_SOURCE.
     """
 
     unknowns: tuple[str, ...]
@@ -61,7 +62,7 @@ class Equations:
     conductance: Real
     capacitance: Real
     paths: Index
-    capacitive: NDArray[np.bool_]
+    path_kind: Index
 
     @property
     def size(self) -> int:
@@ -135,7 +136,7 @@ class _Assembly:
         self.static: list[float] = []
         self.dynamic: list[float] = []
         self.paths: list[tuple[int, int]] = []
-        self.capacitive: list[bool] = []
+        self.path_kind: list[int] = []
 
     def add(self, row: int, column: int, static: float, dynamic: float = 0.0) -> None:
         if row >= 0 and column >= 0:
@@ -144,9 +145,9 @@ class _Assembly:
             self.static.append(static)
             self.dynamic.append(dynamic)
 
-    def tie(self, a: int, b: int, capacitive: bool = False) -> None:
+    def join(self, a: int, b: int, kind: int) -> None:
         self.paths.append((a if a >= 0 else self.node_count, b if b >= 0 else self.node_count))
-        self.capacitive.append(capacitive)
+        self.path_kind.append(kind)
 
     def unknown(self, name: str) -> int:
         self.names.append(name)
@@ -179,7 +180,7 @@ class _Assembly:
             self.add(node, index, sign)
         for column, sign in self.voltage(a, b):
             self.add(index, column, sign)
-        self.tie(a, b)
+        self.join(a, b, CONDUCTOR)
         return index
 
     def admittance(self, nodes: tuple[str, str], static: float, dynamic: float) -> None:
@@ -190,7 +191,7 @@ class _Assembly:
             self.add(a, column, sign * static, sign * dynamic)
             self.add(b, column, -sign * static, -sign * dynamic)
         if static or dynamic:
-            self.tie(a, b, capacitive=not static)
+            self.join(a, b, CONDUCTOR if static else CAPACITOR)
 
     def passive(self, element: Passive, inductances: dict[str, float]) -> None:
         value = element.value
@@ -235,8 +236,8 @@ class _Assembly:
             for row, sign in into:
                 self.add(row, column, sign * gain)
         across = [{self.node[t.positive], self.node[t.negative]} for t in element.terms if not t.source]
-        if not (voltage or explicit) and {a, b} in across:
-            self.tie(a, b)  # a current set by the voltage across it is a conductance
+        if not voltage:  # a current set by the voltage across it is a conductance, until it is killed
+            self.join(a, b, CONDUCTOR if {a, b} in across and not explicit else CURRENT_SOURCE)
 
     def control(self, element: Controlled, term: Term) -> tuple[tuple[int, float], ...]:
         """The unknowns that a term reads, each with its gain."""
@@ -267,7 +268,7 @@ class _Assembly:
             conductance=static,
             capacitance=dynamic,
             paths=np.array(self.paths, dtype=np.int64).reshape(-1, 2),
-            capacitive=np.array(self.capacitive, dtype=np.bool_),
+            path_kind=np.array(self.path_kind, dtype=np.int64),
         )
 
 
@@ -299,44 +300,3 @@ def _joined_nodes(elements: Sequence[Element], shorts: Sequence[Short], sensed: 
     for name in parent:
         index.setdefault(root(name), len(index) - 1)
     return {name: index[root(name)] for name in parent}
-
-
-def with_least_conductance(equations: Equations, dc: bool) -> Equations:
-    """The equations with LEAST_CONDUCTANCE to ground at one node of every part that nothing ties to ground.
-
-    Where no source drives current into such a part, no current flows through the conductance, so it settles
-    the part's voltage and changes nothing else. dc: capacitors tie nothing.
-    """
-    from scipy.sparse import coo_array
-    from scipy.sparse.csgraph import connected_components
-
-    count = equations.node_count
-    ties = equations.paths[~equations.capacitive] if dc else equations.paths
-    graph = coo_array((np.ones(len(ties)), (ties[:, 0], ties[:, 1])), shape=(count + 1, count + 1))
-    _, label = connected_components(graph, directed=False)
-    _, first = np.unique(label, return_index=True)
-    floating = first[label[first] != label[count]]
-    if not floating.size:
-        return equations
-    on_diagonal = {int(r): e for e, r in enumerate(equations.rows) if r == equations.columns[e]}
-    old = [node for node in floating.tolist() if node in on_diagonal]
-    new = np.array([node for node in floating.tolist() if node not in on_diagonal], dtype=np.int64)
-    conductance = equations.conductance.copy()
-    conductance[[on_diagonal[node] for node in old]] += LEAST_CONDUCTANCE
-    return replace(
-        equations,
-        rows=np.concatenate([equations.rows, new]),
-        columns=np.concatenate([equations.columns, new]),
-        conductance=np.concatenate([conductance, np.full(len(new), LEAST_CONDUCTANCE)]),
-        capacitance=np.concatenate([equations.capacitance, np.zeros(len(new))]),
-    )
-
-
-def parts(equations: Equations) -> Index:
-    """The part that each unknown belongs to, (N,): parts share no entry of A."""
-    from scipy.sparse import coo_array
-    from scipy.sparse.csgraph import connected_components
-
-    links = (np.ones(len(equations.rows)), (equations.rows, equations.columns))
-    graph = coo_array(links, shape=(equations.size, equations.size))
-    return np.asarray(connected_components(graph, directed=False)[1], dtype=np.int64)

@@ -60,13 +60,17 @@ class Pattern:
     hold the pivots, the next `fill` ones the columns of L, the last `fill` ones the rows of U, mirrored.
 
     row_at, column_at: when each equation and each unknown is eliminated; given: places of the entries of the
-    equations; wanted: places of the entries of the inverse that were asked for, (unknown, equation) each.
+    equations; wanted: places of the entries of the inverse that were asked for, (unknown, equation) each;
+    row_scale, column_scale: factors that make the matched entries 1 and all others at most 1, at the frequency
+    that the order was chosen for.
     """
 
     size: int
     fill: int
     row_at: Index
     column_at: Index
+    row_scale: Real
+    column_scale: Real
     given: Index
     wanted: Index
     levels: tuple[Level, ...]
@@ -87,8 +91,8 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
     inverse at (unknowns, rows), each (W,). Raises SingularCircuit where no set of pivots exists."""
     size = equations.size
     owner = matched(equations, values)  # equation -> the unknown that it is solved for
-    by_row, by_column = scales(equations, values, owner)
-    scaled = values * by_row[equations.rows] * by_column[equations.columns]
+    row_scale, column_scale = scales(equations, values, owner)
+    scaled = values * row_scale[equations.rows] * column_scale[equations.columns]
     for _ in range(TRIALS):
         position = minimum_degree(
             np.concatenate([owner[equations.rows], owner[rows]]),
@@ -108,6 +112,8 @@ def pivot_order(equations: Equations, values: Complex, unknowns: Index, rows: In
     return Pattern(
         size=size,
         fill=len(below),
+        row_scale=row_scale,
+        column_scale=column_scale,
         row_at=position[owner],
         column_at=position,
         given=table.at(row_at, column_at),

@@ -1,40 +1,24 @@
-"""Parts of a circuit that do not touch: where one has no solution, the others still have theirs."""
+"""How a circuit hangs together: parts that do not touch, and parts that nothing joins to ground."""
 
 from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from xcheck.circuit.arrays import Complex, Real
-from xcheck.circuit.equations import Equations, Index, parts
-from xcheck.circuit.solution import inverse_entries
-from xcheck.errors import SingularCircuit
+from xcheck.circuit.equations import CAPACITOR, CONDUCTOR, CURRENT_SOURCE, Equations, Index
+
+LEAST_CONDUCTANCE = 1e-12
+"""Siemens, from one node of every island to ground; the value that ngspice calls gmin."""
 
 
-def inverse_by_part(
-    equations: Equations, frequency: Real, unknowns: Index, rows: Index
-) -> tuple[Complex, dict[int, str]]:
-    """The entries of the inverse (see inverse_entries), shape (W, F), and, by index, the reason for those
-    that lie in a part without a unique solution; these are 0."""
-    try:
-        return inverse_entries(equations, frequency, unknowns, rows), {}
-    except SingularCircuit as error:
-        reason = str(error)
-    part = parts(equations)
-    result = np.zeros((len(unknowns), len(frequency)), dtype=np.complex128)
-    middle = (int(part.max()) + 1) // 2
-    if not middle:
-        return result, dict.fromkeys(range(len(unknowns)), reason)
-    failures: dict[int, str] = {}
-    for half in (part < middle, part >= middle):
-        there = np.flatnonzero(half[unknowns] & half[rows])  # across parts nothing answers
-        if there.size:
-            number = np.cumsum(half) - 1
-            result[there], failed = inverse_by_part(
-                restricted(equations, half), frequency, number[unknowns[there]], number[rows[there]]
-            )
-            failures.update({int(there[index]): why for index, why in failed.items()})
-    return result, failures
+def parts(equations: Equations) -> Index:
+    """The part that each unknown belongs to, (N,): parts share no entry of A."""
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+
+    links = (np.ones(len(equations.rows)), (equations.rows, equations.columns))
+    graph = coo_array(links, shape=(equations.size, equations.size))
+    return np.asarray(connected_components(graph, directed=False)[1], dtype=np.int64)
 
 
 def restricted(equations: Equations, kept: NDArray[np.bool_]) -> Equations:
@@ -58,5 +42,46 @@ def restricted(equations: Equations, kept: NDArray[np.bool_]) -> Equations:
         conductance=equations.conductance[there],
         capacitance=equations.capacitance[there],
         paths=paths[inside],
-        capacitive=equations.capacitive[inside],
+        path_kind=equations.path_kind[inside],
+    )
+
+
+def islands(equations: Equations, dc: bool, fed: bool = False, cuts: int = 0) -> Index:
+    """The island that each node belongs to, (node_count + 1,), the last entry being ground's: nodes of one
+    island are joined by conductors, and above DC by capacitors. fed: by current sources as well; cuts: how
+    many of the shorts, which come first, are left out."""
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+
+    kinds = [CONDUCTOR, *([] if dc else [CAPACITOR]), *([CURRENT_SOURCE] if fed else [])]
+    joined = np.isin(equations.path_kind, kinds)
+    joined[:cuts] = False
+    ends = equations.paths[joined]
+    size = equations.node_count + 1
+    graph = coo_array((np.ones(len(ends)), (ends[:, 0], ends[:, 1])), shape=(size, size))
+    return np.asarray(connected_components(graph, directed=False)[1], dtype=np.int64)
+
+
+def with_least_conductance(equations: Equations, dc: bool) -> Equations:
+    """The equations with LEAST_CONDUCTANCE to ground at one node of every island without ground.
+
+    Where no source drives current into an island, none flows through the conductance, so it settles the
+    island's voltage and changes nothing else. dc: capacitors join nothing.
+    """
+    island = islands(equations, dc)
+    _, first = np.unique(island, return_index=True)
+    floating = first[island[first] != island[-1]]
+    if not floating.size:
+        return equations
+    on_diagonal = {int(equations.rows[e]): int(e) for e in np.flatnonzero(equations.rows == equations.columns)}
+    old = [node for node in floating.tolist() if node in on_diagonal]
+    new = np.array([node for node in floating.tolist() if node not in on_diagonal], dtype=np.int64)
+    conductance = equations.conductance.copy()
+    conductance[[on_diagonal[node] for node in old]] += LEAST_CONDUCTANCE
+    return replace(
+        equations,
+        rows=np.concatenate([equations.rows, new]),
+        columns=np.concatenate([equations.columns, new]),
+        conductance=np.concatenate([conductance, np.full(len(new), LEAST_CONDUCTANCE)]),
+        capacitance=np.concatenate([equations.capacitance, np.zeros(len(new))]),
     )

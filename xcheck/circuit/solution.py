@@ -11,14 +11,16 @@ read from the last pivot to the first. Frequency is the last axis; what loops is
 tree, never the frequency.
 """
 
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from xcheck.circuit.arrays import Complex, Real
-from xcheck.circuit.equations import Equations, Index, parts, with_least_conductance
+from xcheck.circuit.equations import Equations, Index
 from xcheck.circuit.ordering import Pattern, matched, pivot_order, scales
+from xcheck.circuit.parts import parts, restricted, with_least_conductance
 from xcheck.errors import SingularCircuit
 
 if TYPE_CHECKING:
@@ -29,6 +31,9 @@ LARGEST_RESIDUAL = 1e-10
 
 LARGEST_ERROR = 1e-8
 """Of an entry of the inverse, relative, against the solution for its right-hand side."""
+
+ROUNDING = 8 * float(np.finfo(np.float64).eps)
+"""Of the largest unknown, all scaled: below it a value is as good as zero."""
 
 LARGEST_SUM = 1e13
 """Of the magnitudes in A Z: beyond it what is left of the digits is chance, and the circuit is singular."""
@@ -59,9 +64,46 @@ def inverse_entries(equations: Equations, frequency: Real, unknowns: Index, rows
     return result
 
 
+def inverse_by_part(
+    equations: Equations, frequency: Real, unknowns: Index, rows: Index
+) -> tuple[Complex, dict[int, str]]:
+    """The entries of the inverse (see inverse_entries), shape (W, F), and, by index, the reason for those
+    that lie in a part without a unique solution; these are 0."""
+    try:
+        return inverse_entries(equations, frequency, unknowns, rows), {}
+    except SingularCircuit as error:
+        reason = str(error)
+    part = parts(equations)
+    result = np.zeros((len(unknowns), len(frequency)), dtype=np.complex128)
+    middle = (int(part.max()) + 1) // 2
+    if not middle:
+        return result, dict.fromkeys(range(len(unknowns)), reason)
+    failures: dict[int, str] = {}
+    for half in (part < middle, part >= middle):
+        there = np.flatnonzero(half[unknowns] & half[rows])  # across parts nothing answers
+        if there.size:
+            number = np.cumsum(half) - 1
+            result[there], failed = inverse_by_part(
+                restricted(equations, half), frequency, number[unknowns[there]], number[rows[there]]
+            )
+            failures.update({int(there[index]): why for index, why in failed.items()})
+    return result, failures
+
+
+@dataclass(frozen=True, slots=True)
+class _Asked:
+    """The entries that are asked for, and the part of the circuit that each unknown belongs to."""
+
+    equations: Equations
+    unknowns: Index
+    rows: Index
+    part: Index
+
+
 def _entries(equations: Equations, frequency: Real, unknowns: Index, rows: Index) -> Complex:
     result = np.empty((len(unknowns), len(frequency)), dtype=np.complex128)
-    probes = _probes(equations, rows)
+    asked = _Asked(equations, unknowns, rows, parts(equations))
+    probes = _probes(asked.part, rows)
     left = np.argsort(frequency, kind="stable")
     for _ in range(ORDERS):
         typical = frequency[left[len(left) // 4]]
@@ -75,9 +117,8 @@ def _entries(equations: Equations, frequency: Real, unknowns: Index, rows: Index
             entries = inverse[pattern.wanted]
             result[:, left[block]] = entries
             accurate[block] = residual(equations, pattern, values, inverse) <= LARGEST_RESIDUAL
-            for chosen in probes:
-                answer, right = _probed(equations, pattern, factors, rows, chosen)
-                accurate[block] &= _agree(equations, values, answer, right, entries[chosen], unknowns[chosen])
+            for probe in probes:
+                accurate[block] &= _confirmed(asked, pattern, values, factors, entries, probe)
         left = left[~accurate]
         if not left.size:
             return result
@@ -86,45 +127,60 @@ def _entries(equations: Equations, frequency: Real, unknowns: Index, rows: Index
     return result
 
 
-def _probes(equations: Equations, rows: Index) -> list[NDArray[np.bool_]]:
+def _probes(part: Index, rows: Index) -> list[NDArray[np.bool_]]:
     """Which of the entries asked for each probe looks at: those of one column in every part, drawn by lot.
     Parts do not touch, so one right-hand side serves them all."""
-    part = parts(equations)
     columns = np.unique(rows)
     draw = np.random.default_rng(0)
     probes = []
     for _ in range(PROBES):
         lot = np.lexsort((draw.random(len(columns)), part[columns]))
         _, first = np.unique(part[columns[lot]], return_index=True)
-        drawn = np.zeros(equations.size, dtype=np.bool_)
+        drawn = np.zeros(len(part), dtype=np.bool_)
         drawn[columns[lot[first]]] = True
         probes.append(drawn[rows])
     return probes
 
 
-def _probed(
-    equations: Equations, pattern: Pattern, factors: Complex, rows: Index, chosen: NDArray[np.bool_]
-) -> tuple[Complex, Complex]:
-    """The solution (N, F) for a unit on each of the chosen rows, and that right-hand side."""
-    right = np.zeros((equations.size, 1), dtype=np.complex128)
-    right[rows[chosen]] = 1.0
-    return solve(pattern, factors, right), right
-
-
-def _agree(
-    equations: Equations, values: Complex, answer: Complex, right: Complex, entries: Complex, unknowns: Index
+def _confirmed(
+    asked: _Asked, pattern: Pattern, values: Complex, factors: Complex, entries: Complex, probe: NDArray[np.bool_]
 ) -> NDArray[np.bool_]:
-    """Whether a solution fulfils the equations, and entries of the inverse are the solution's, (F,)."""
+    """Whether the entries that a probe looks at are what a solution for its right-hand side says, and that
+    solution fulfils the equations, at each frequency, (F,)."""
+    equations, unknowns, rows = asked.equations, asked.unknowns[probe], asked.rows[probe]
+    right = np.zeros((equations.size, 1), dtype=np.complex128)
+    right[rows] = 1.0
+    answer = solve(pattern, factors, right)
+    noise = _noise(answer, asked.part, pattern.column_scale)
+    expected = answer[unknowns]
+    floor = (noise * pattern.column_scale[:, None])[unknowns]
+    near = LARGEST_ERROR * np.abs(expected) + floor
+    with np.errstate(all="ignore"):
+        same: NDArray[np.bool_] = np.all(np.abs(entries[probe] - expected) <= near, axis=0)
+    return same & _fulfilled(equations, values, answer, right, noise / pattern.row_scale[:, None])
+
+
+def _noise(answer: Complex, part: Index, column_scale: Real) -> Real:
+    """What rounding may leave of a solution's zeros, scaled, (N, F): eps of the largest unknown of the part."""
+    with np.errstate(all="ignore"):
+        size = np.abs(answer) / column_scale[:, None]
+    order = np.argsort(part, kind="stable")
+    starts = np.flatnonzero(np.diff(part[order], prepend=-1))
+    largest: Real = ROUNDING * np.maximum.reduceat(size[order], starts, axis=0)
+    return largest[part]
+
+
+def _fulfilled(
+    equations: Equations, values: Complex, answer: Complex, right: Complex, noise: Real
+) -> NDArray[np.bool_]:
+    """Whether a solution fulfils the equations at each frequency, (F,); componentwise, as in Arioli, Demmel and
+    Duff, Solving sparse linear systems with sparse backward error, SIAM J. Matrix Anal. Appl. 10, 1989."""
     order, starts = _by_row(equations)
     with np.errstate(all="ignore"):
         products = values[order] * answer[equations.columns[order]]
         off = np.abs(np.add.reduceat(products, starts, axis=0) - right)
         size = np.add.reduceat(np.abs(products), starts, axis=0) + np.abs(right)
-        fulfilled = (off <= LARGEST_RESIDUAL * size).all(axis=0)
-        expected = answer[unknowns]
-        floor = 4 * np.finfo(np.float64).eps * np.abs(expected).max(axis=0, initial=0.0)
-        same = np.abs(entries - expected) <= LARGEST_ERROR * np.abs(expected) + floor
-    result: NDArray[np.bool_] = fulfilled & same.all(axis=0)
+        result: NDArray[np.bool_] = np.all(off <= LARGEST_RESIDUAL * size + noise, axis=0)
     return result
 
 
@@ -236,8 +292,9 @@ def by_column(equations: Equations, frequency: float, unknowns: Index, rows: Ind
         for _ in range(3):
             columns += by_unknown[:, None] * np.asarray(factors.solve(by_row[:, None] * off))
             off = right - np.asarray(matrix @ columns)
-        size_of = np.asarray(magnitudes @ np.abs(columns))
-        enough = np.abs(off) <= LARGEST_RESIDUAL * (size_of + np.abs(right))
+        size_of = np.asarray(magnitudes @ np.abs(columns)) + np.abs(right)
+        noise = _noise(columns, part, by_unknown) / by_row[:, None]
+        enough = np.abs(off) <= LARGEST_RESIDUAL * size_of + noise
         if not (enough.all() and (size_of[right != 0] < LARGEST_SUM).all()):
             raise SingularCircuit(_undetermined(equations, matrix, frequency))
         here = now[column] & (part[unknowns] == part[rows])  # across parts nothing answers

@@ -1,23 +1,22 @@
 """Cutting a circuit at its ports: a zero-volt branch between a stage's side of a node and all else on it."""
 
-from collections import Counter
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
-from xcheck.circuit.elements import GROUND, Circuit, Controlled, Element, Source
-from xcheck.circuit.equations import Short
+from xcheck.circuit.elements import GROUND, Circuit, Controlled, Element
+from xcheck.circuit.equations import Equations, Index, Short
+from xcheck.circuit.parts import islands
 from xcheck.stages.types import Port
 
 
 @dataclass(frozen=True, slots=True)
 class Cut:
     """The cut of one port. inside: name of the node on the stage's side; outside: the port's own node, where
-    the cuts of all its ports meet; open: nothing outside lets current through at AC."""
+    the cuts of all its ports meet."""
 
     port: Port
     inside: str
     outside: str
-    open: bool
 
     @property
     def branch(self) -> Short:
@@ -67,12 +66,7 @@ def cut_apart(circuit: Circuit, ports: Sequence[Port]) -> tuple[list[Element], l
         for terminal in port.inside:
             moves.setdefault(terminal.element, []).append((terminal.index, port.node, inside[port.subject]))
     elements = [_moved(e, moves.pop(e.name)) if e.name in moves else e for e in circuit.elements]
-    conducting = Counter(port.node for port in ports)
-    for element in elements:
-        if not (isinstance(element, Source) and element.kind == "i"):
-            conducting.update(element.nodes)
-    cuts = [Cut(port, inside[port.subject], port.node, conducting[port.node] < 2) for port in ports]
-    return elements, cuts
+    return elements, [Cut(port, inside[port.subject], port.node) for port in ports]
 
 
 def _moved(element: Element, moves: Sequence[tuple[int, str, str]]) -> Element:
@@ -93,3 +87,39 @@ def _moved(element: Element, moves: Sequence[tuple[int, str, str]]) -> Element:
                 ),
             )
     return replace(element, nodes=tuple(nodes))  # type: ignore[arg-type]  # as many nodes as before
+
+
+def closed_sides(equations: Equations, cuts: Sequence[Cut], dc: bool) -> tuple[list[bool], list[bool]]:
+    """For each cut, in the order in which the equations have their shorts, whether no current can flow: on
+    the stage's side, because neither a conductor nor a current source leads on to ground; outside, because no
+    conductor does, be it that current sources drive the port."""
+    inside = islands(equations, dc, fed=True, cuts=len(cuts))
+    outside = islands(equations, dc, cuts=len(cuts))
+    return (
+        _cut_off(equations, inside, [(cut.inside, cut.outside) for cut in cuts]),
+        _cut_off(equations, outside, [(cut.outside, cut.inside) for cut in cuts]),
+    )
+
+
+def _cut_off(equations: Equations, island: Index, cuts: Sequence[tuple[str, str]]) -> list[bool]:
+    """For each cut whether its first node has no way to ground but through the cut itself."""
+    ground = int(island[-1])
+    ends = [tuple(int(island[equations.node[node]]) for node in cut) for cut in cuts]
+    across: dict[int, list[tuple[int, int]]] = {}
+    for n, (near, far) in enumerate(ends):
+        across.setdefault(near, []).append((n, far))
+        across.setdefault(far, []).append((n, near))
+    return [not _reaches(start, ground, n, across) for n, (start, _) in enumerate(ends)]
+
+
+def _reaches(start: int, ground: int, barred: int, across: Mapping[int, Sequence[tuple[int, int]]]) -> bool:
+    seen, ahead = {start}, [start]
+    while ahead:
+        here = ahead.pop()
+        if here == ground:
+            return True
+        for cut, there in across.get(here, ()):
+            if cut != barred and there not in seen:
+                seen.add(there)
+                ahead.append(there)
+    return False

@@ -23,12 +23,13 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from xcheck.circuit.arrays import Complex, Real
 from xcheck.circuit.equations import Equations, assemble
-from xcheck.circuit.parts import inverse_by_part
+from xcheck.circuit.solution import inverse_by_part
 from xcheck.errors import CallError
-from xcheck.impedance.cuts import Cut, cut_apart, in_batches
+from xcheck.impedance.cuts import Cut, closed_sides, cut_apart, in_batches
 from xcheck.impedance.linearity import obstacles
 from xcheck.impedance.types import ReturnRatio
 from xcheck.stages.types import Amplifier, Partition, Stage
@@ -47,13 +48,14 @@ def return_ratios(partition: Partition, frequency: Real) -> dict[str, ReturnRati
     frequency: Hz, shape (F,); 0 is DC, with capacitors open and inductors short. Infinite impedances are
     numpy inf with no imaginary part.
     """
+    still = frequency == 0
+    if still.any() and not still.all():  # at DC other sides of the ports are open
+        return _merged(return_ratios(partition, frequency[still]), return_ratios(partition, frequency[~still]), still)
     refused = obstacles(partition)
     answers: dict[str, ReturnRatio | str] = {
         port.subject: refused.get(stage.name, "") for stage in partition.stages for port in stage.ports
     }
-    amplifier = {
-        port.subject: _amplifier_at(stage, port.node) for stage in partition.stages for port in stage.ports
-    }
+    amplifier = {port.subject: _amplifier_at(stage, port.node) for stage in partition.stages for port in stage.ports}
     ports = [p for stage in partition.stages if stage.name not in refused for p in stage.ports]
     batches, uncut = in_batches(partition.circuit, ports)
     answers.update(uncut)
@@ -94,6 +96,25 @@ def loop_gains(partition: Partition, frequency: Real) -> dict[str, Complex]:
         for amplifier, loop in zip(amplifiers, loops, strict=True)
         if not failures.get(loop.sensitivity)
     }
+
+
+def _merged(
+    still: dict[str, ReturnRatio | str], moving: dict[str, ReturnRatio | str], where: NDArray[np.bool_]
+) -> dict[str, ReturnRatio | str]:
+    """The answers at DC and above it as one; where: (F,) DC."""
+    merged: dict[str, ReturnRatio | str] = {}
+    for subject, at_dc in still.items():
+        above = moving[subject]
+        if isinstance(at_dc, str) or isinstance(above, str):
+            merged[subject] = at_dc if isinstance(at_dc, str) else above
+            continue
+        fields = []
+        for name in ("z0", "t_short", "t_open", "impedance"):
+            field = np.empty(len(where), dtype=np.complex128)
+            field[where], field[~where] = getattr(at_dc, name), getattr(above, name)
+            fields.append(field)
+        merged[subject] = ReturnRatio(above.source, *fields)
+    return merged
 
 
 def _amplifier_at(stage: Stage, node: str) -> Amplifier:
@@ -166,32 +187,36 @@ def _answers(
     wanted = _Wanted()
     loops = {source: _Loop.of(equations, source, wanted) for source in dict.fromkeys(sources)}
     answers: dict[str, ReturnRatio | str] = {}
-    places: list[tuple[Cut, str, tuple[int, ...]]] = []
-    for cut, source in zip(cuts, sources, strict=True):
+    places: list[tuple[Cut, str, bool, tuple[int, ...]]] = []
+    inside, outside = closed_sides(equations, cuts, dc=not frequency.any())
+    for cut, source, closed, alone in zip(cuts, sources, inside, outside, strict=True):
         voltage, current = equations.node[cut.inside], equations.branch[cut.branch.name]
         loop = loops[source]
-        by_current = cut.port.side == "output" or cut.port.current_driven or cut.open
+        by_current = cut.port.side == "output" or cut.port.current_driven or alone
         test = equations.node[cut.outside] if by_current else current
         if test < 0:
             answers[cut.port.subject] = "its node is held by a voltage source, so no test current can move it"
             continue
         pairs = [(voltage, test), (current, test), (voltage, loop.row), (current, loop.row)]
         pairs.append((loop.unknown, test))
-        places.append((cut, source, tuple(wanted.add(*pair) for pair in pairs)))
+        places.append((cut, source, closed, tuple(wanted.add(*pair) for pair in pairs)))
     inverse, failures = wanted.entries(equations, frequency)
-    for cut, source, own in places:
+    for cut, source, closed, own in places:
         loop = loops[source]
         failed = [failures[place] for place in (loop.sensitivity, *own) if place in failures]
-        answers[cut.port.subject] = failed[0] if failed else _blackman(inverse, source, loop, own)
+        answers[cut.port.subject] = failed[0] if failed else _blackman(inverse, source, loop, own, closed)
     return answers
 
 
-def _blackman(inverse: Complex, source: str, loop: _Loop, places: tuple[int, ...]) -> ReturnRatio | str:
-    """Blackman's quantities of one port from the entries (V, test), (I, test), (V, r), (I, r), (y, test)."""
+def _blackman(
+    inverse: Complex, source: str, loop: _Loop, places: tuple[int, ...], no_current: bool
+) -> ReturnRatio | str:
+    """Blackman's quantities of one port from the entries (V, test), (I, test), (V, r), (I, r), (y, test);
+    no_current: the stage's side lets none in."""
     voltage, current, voltage_by_source, current_by_source, output = (inverse[place] for place in places)
     sensitivity, returned = inverse[loop.sensitivity], loop.returned(inverse)
     in_place = _ratio(-returned, sensitivity)
-    closed = np.abs(current) * INFINITE_OHM <= np.abs(voltage)
+    closed = (np.abs(current) * INFINITE_OHM <= np.abs(voltage)) | no_current
     current = np.where(closed, 0, current)
     short, lost_short = _dead(sensitivity, voltage, voltage_by_source, output)
     opened, lost_open = _dead(sensitivity, current, current_by_source, output)
