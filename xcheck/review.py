@@ -1,0 +1,134 @@
+"""The whole flow, from paths to an outcome: the one place that knows the order of the steps."""
+
+from collections.abc import Callable, Iterable
+from dataclasses import replace
+from pathlib import Path
+
+from xcheck.deck.cards import Deck
+from xcheck.deck.reader import read_deck
+from xcheck.directives import band_of
+from xcheck.elaboration import elaborate
+from xcheck.errors import CallError, DeckUnreadable, EngineError
+from xcheck.finding import Finding
+from xcheck.grid import DEFAULT_BAND, comparison_grid
+from xcheck.impedance.answers import answer_ports
+from xcheck.impedance.closed_form import closed_forms
+from xcheck.impedance.return_ratio import return_ratios
+from xcheck.options import Options
+from xcheck.reviewed import DeckReview, Evidence, Outcome
+from xcheck.rules import run_rules
+from xcheck.simulate import find_engine, measure
+from xcheck.simulate.types import EngineInfo
+from xcheck.stages import find_amplifiers, split
+from xcheck.topologies import classify
+
+DECK_ENDINGS = (".cir", ".ckt", ".net", ".sp", ".spi", ".spice")
+
+Progress = Callable[[str, int, int], None]
+"""Told the deck's path, the ports measured so far and the ports to measure."""
+
+
+def review(
+    paths: str | Path | Iterable[str | Path],
+    *,
+    options: Options | None = None,
+    progress: Progress | None = None,
+) -> Outcome:
+    """Reviews decks, or all decks in folders, in the order given.
+
+    Raises CallError where there is nothing to review, EngineError where ngspice was asked for by name and
+    is not there, DeckUnreadable where the only deck cannot be read; everything else is in the outcome.
+    """
+    options = options or Options()
+    decks = _decks_of([paths] if isinstance(paths, (str, Path)) else list(paths))
+    engine = _engine(options)
+    reviews = [_review_deck(path, options, engine, progress) for path in decks]
+    if len(reviews) == 1 and reviews[0].unreadable:
+        raise DeckUnreadable(reviews[0].unreadable)
+    return Outcome(tuple(reviews), engine, options)
+
+
+def _decks_of(paths: list[str | Path]) -> list[Path]:
+    decks: list[Path] = []
+    for given in paths:
+        path = Path(given)
+        if path.is_dir():
+            inside = sorted(p for p in path.rglob("*") if p.suffix.lower() in DECK_ENDINGS and p.is_file())
+            decks += [p for p in inside if not any(part.startswith(".") for part in p.relative_to(path).parts)]
+        else:
+            decks.append(path)
+    if not decks:
+        raise CallError(f"no deck in {', '.join(map(str, paths))}: looked for {' '.join(DECK_ENDINGS)}")
+    return list(dict.fromkeys(decks))
+
+
+def _engine(options: Options) -> EngineInfo:
+    if options.engine == "none":
+        return EngineInfo(available=False, reason="not asked for (engine none)")
+    engine = find_engine()
+    if options.engine == "ngspice" and not engine.available:
+        raise EngineError(f"ngspice was asked for and is not there: {engine.reason}")
+    return engine
+
+
+def _review_deck(path: Path, options: Options, engine: EngineInfo, progress: Progress | None) -> DeckReview:
+    try:
+        deck = read_deck(path, include_dirs=options.include_dirs)
+    except DeckUnreadable as error:
+        return DeckReview(str(path), "", None, (), unreadable=str(error))
+    evidence, findings = analyse(deck, options, engine, progress)
+    return DeckReview(deck.path, deck.title, evidence, findings)
+
+
+def analyse(
+    deck: Deck, options: Options, engine: EngineInfo, progress: Progress | None = None
+) -> tuple[Evidence, tuple[Finding, ...]]:
+    """All that can be known of one deck, and what the rules say of it, in order of place."""
+    circuit = elaborate(deck, options.subckt)
+    declared, refusals = band_of(deck.directives)
+    band = options.band or declared
+    in_band = band or DEFAULT_BAND
+    amplifiers, amplifier_findings = find_amplifiers(circuit)
+    partition = split(circuit, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
+    frequency = comparison_grid(circuit.analyses, options.spots)
+    recognised = {stage.name: classify(partition, stage, band=in_band) for stage in partition.stages}
+    roads = return_ratios(partition, frequency)
+    forms = closed_forms(partition, frequency, band=in_band)
+    simulation = None
+    if engine.available and any(stage.ports for stage in partition.stages):
+
+        def tell(done: int, total: int) -> None:
+            if progress is not None:
+                progress(deck.path, done, total)
+
+        simulation = measure(deck, circuit, partition, frequency, progress=tell)
+    answers = answer_ports(
+        partition,
+        {name: r.topology for name, r in recognised.items()},
+        frequency,
+        roads,
+        forms,
+        {} if simulation is None else simulation.values,
+        {} if simulation is None else simulation.unmeasured,
+        tolerance=options.tolerance,
+    )
+    evidence = Evidence(
+        deck=deck,
+        circuit=circuit,
+        partition=partition,
+        recognised=recognised,
+        answers=answers,
+        simulation=simulation,
+        frequency=frequency,
+        band=in_band,
+        band_declared=band is not None,
+        options=options,
+    )
+    findings = (*deck.findings, *circuit.findings, *refusals, *partition.findings, *run_rules(evidence))
+    return evidence, _in_order(findings)
+
+
+def _in_order(findings: Iterable[Finding]) -> tuple[Finding, ...]:
+    """Each finding once, by place and then by rule."""
+    once = dict.fromkeys(replace(f) for f in findings)
+    return tuple(sorted(once, key=lambda f: (f.place.file, f.place.line, f.place.column, f.rule)))
