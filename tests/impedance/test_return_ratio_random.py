@@ -177,16 +177,14 @@ class Exact:
         return pairs
 
     def impedance(self, dead: str = "") -> mpmath.mpc:
-        """The definition of the port's impedance; a voltage in series that drives nothing because the outside
-        is open gives way to a current."""
+        """The definition of the port's impedance."""
         m, right = self.matrix(dead), mpmath.zeros(self.size, 1)
         inside, cut = self.node["inside"], self.branch[CUT]
         right[inside if self.by_current else cut] = 1
         x = mpmath.lu_solve(m, right)
         nothing = mpmath.mpf(10) ** (-DIGITS // 2)
-        if not (self.by_current or dead) and abs(x[inside]) < nothing and abs(x[cut]) < nothing:
-            self.by_current = True
-            return self.impedance()
+        if not self.by_current and abs(x[inside]) < nothing and abs(x[cut]) < nothing:
+            raise ZeroDivisionError("the outside is open, so a voltage in series shows nothing")
         return x[inside] / (1 + x[cut] if self.by_current else x[cut])
 
     def returned(self, condition: str) -> mpmath.mpc:

@@ -90,14 +90,13 @@ def _moved(element: Element, moves: Sequence[tuple[int, str, str]]) -> Element:
 
 
 def closed_sides(equations: Equations, cuts: Sequence[Cut], dc: bool) -> tuple[list[bool], list[bool]]:
-    """For each cut, in the order in which the equations have their shorts, whether no current can flow: on
-    the stage's side, because neither a conductor nor a current source leads on to ground; outside, because no
-    conductor does, be it that current sources drive the port."""
-    inside = islands(equations, dc, fed=True, cuts=len(cuts))
-    outside = islands(equations, dc, cuts=len(cuts))
+    """For each cut, in the order in which the equations have their shorts, whether no current can flow because
+    neither a conductor nor a controlled current source leads on to ground: on the stage's side, and outside.
+    """
+    island = islands(equations, dc, fed=True, cuts=len(cuts))
     return (
-        _cut_off(equations, inside, [(cut.inside, cut.outside) for cut in cuts]),
-        _cut_off(equations, outside, [(cut.outside, cut.inside) for cut in cuts]),
+        _cut_off(equations, island, [(cut.inside, cut.outside) for cut in cuts]),
+        _cut_off(equations, island, [(cut.outside, cut.inside) for cut in cuts]),
     )
 
 
