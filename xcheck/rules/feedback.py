@@ -83,12 +83,12 @@ def feedback_missing(evidence: Evidence) -> Iterator[Finding]:
     if not is_complete(evidence):
         return
     circles = _circles(evidence.partition)
+    without = [a for a in evidence.partition.amplifiers if not _share(circles, a.output, a.inverting)]
+    if not without:
+        return
     positive = {a.name for stage, _, _ in _positive(evidence) for a in stage.amplifiers}
-    driven: set[str] | None = None
-    for amplifier in evidence.partition.amplifiers:
-        if _share(circles, amplifier.output, amplifier.inverting) or amplifier.name in positive:
-            continue
-        driven = _driven_at_ac(evidence) if driven is None else driven
+    driven = _driven_at_ac(evidence)
+    for amplifier in (a for a in without if a.name not in positive):
         meant = _why_meant(evidence, amplifier) or _reference_input(evidence, amplifier, driven)
         message = (
             f"no way leads from the output of {amplifier.name}, node `{amplifier.output}`, to its inverting input, "

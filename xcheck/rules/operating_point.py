@@ -7,6 +7,7 @@ from xcheck.finding import Finding
 from xcheck.notation import engineering
 from xcheck.place import Place
 from xcheck.reviewed import Evidence
+from xcheck.simulate.types import Simulation
 from xcheck.stages.types import Amplifier
 
 MARGIN_VOLT = 0.05
@@ -16,6 +17,10 @@ come within tens of millivolts under light load (common practice), and no output
 
 OPERATING_POINT = "operating point"
 
+SINGULAR = re.compile(r"singular matrix.*", re.IGNORECASE)
+MOST_WORDS = 300
+"""Characters of what ngspice says; its own log has the rest."""
+
 NAME = re.compile(r"[a-z0-9_.#+\-]+")
 
 
@@ -24,14 +29,12 @@ def operating_point_fails(evidence: Evidence) -> Iterator[Finding]:
     simulation = evidence.simulation
     if simulation is None or simulation.failed_step != OPERATING_POINT:
         return
-    said = simulation.failure.strip() or "nothing on why"
     place, named = _named_in(evidence, (simulation.failure, *simulation.messages))
-    where = f" It names {named}." if named else ""
     yield Finding(
         "operating-point-fails",
         "error",
         place,
-        f"ngspice finds no operating point; it says: {said}.{where}",
+        f"ngspice finds no operating point; it says: {_in_its_words(simulation)}",
         subject=named,
         advice="look for nodes without a DC path, loops of voltage sources, and positive feedback",
     )
@@ -40,18 +43,29 @@ def operating_point_fails(evidence: Evidence) -> Iterator[Finding]:
 def simulation_fails(evidence: Evidence) -> Iterator[Finding]:
     """ngspice is there and the run came to nothing for another reason than the operating point."""
     simulation = evidence.simulation
-    if simulation is None or not simulation.failed_step or simulation.failed_step == OPERATING_POINT:
+    if simulation is None or not simulation.engine.available or simulation.failed_step in ("", OPERATING_POINT):
         return
-    said = simulation.failure.strip() or "nothing on why"
     place, named = _named_in(evidence, (simulation.failure,))
     yield Finding(
         "simulation-fails",
         "warning",
         place,
-        f"no impedance was simulated; ngspice failed ({simulation.failed_step}) and says: {said}",
+        f"no impedance was simulated: ngspice failed ({simulation.failed_step}) and says: {_in_its_words(simulation)}",
         subject=named,
         advice="the analytic values stand unchecked until ngspice can run this deck",
     )
+
+
+def _in_its_words(simulation: Simulation) -> str:
+    """What ngspice says of a failure: the matrix that it called singular, and its last words; its steps in between
+    left out."""
+    said = [part.strip() for text in (*simulation.messages, simulation.failure) for part in text.split(" / ")]
+    singular = [SINGULAR.search(part) for part in said]
+    first = next((match.group() for match in singular if match), "")
+    last = [part for part in simulation.failure.split(" / ") if part.strip() and "aborted" not in part]
+    words = "; ".join(dict.fromkeys(w for w in (first, *(p.strip() for p in last[-1:])) if w))
+    words = words or "nothing on why"
+    return words if len(words) <= MOST_WORDS else words[: MOST_WORDS - 3] + "..."
 
 
 def not_simulated(evidence: Evidence) -> Iterator[Finding]:

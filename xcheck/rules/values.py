@@ -18,6 +18,9 @@ LOST = re.compile(r"(?P<letter>[rRvV])?(?P<figures>\d{1,3})(?P<unit>[A-Za-z]*)")
 """What follows the scale factor in `4k7`, `2R2`, `3V3`, `1u5F`: a letter that stands for the decimal point
 where no scale factor does, and the figures after it."""
 
+FIGURES_APART = re.compile(r"\d[A-Za-z]+\d")
+"""Tells quickly that a card cannot hold such a value."""
+
 FIGURES_AFTER_KEY = 2
 """After `key =` more figures than this are rather a part's name (`1n4148`) than a value."""
 
@@ -27,7 +30,7 @@ def digit_after_suffix(evidence: Evidence) -> Iterator[Finding]:
     follows the scale factor. Where nothing is lost (`5V0`, `1k0`) nothing is said, nor of `10u50V` and
     `10k1%`."""
     for card in evidence.deck.cards:
-        for spot in spots(card):
+        for spot in spots(card) if FIGURES_APART.search(card.text) else ():
             lost = _lost(spot)
             if lost is not None:
                 yield _digits_lost(spot, *lost)
@@ -74,7 +77,7 @@ def comma_in_number(evidence: Evidence) -> Iterator[Finding]:
     arguments of analyses are separated by commas rightly."""
     values = {e.origin.card.segments[0]: e.value for e in evidence.circuit.elements if isinstance(e, Passive)}
     for card in evidence.deck.cards:
-        for first, second in comma_pairs(card):
+        for first, second in comma_pairs(card) if "," in card.text else ():
             word = card.text[first.start : second.end]
             read = f"ngspice sees two numbers, `{first.text}` and `{second.text}`"
             if card.kind in ("r", "c", "l") and card.segments[0] in values:
