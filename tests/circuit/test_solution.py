@@ -187,3 +187,8 @@ def test_a_source_that_nothing_reads_makes_its_node_still() -> None:
         equations, np.array([1.0]), np.array([equations.node["b"]]), np.array([equations.node["b"]])
     )
     assert found[0, 0] == pytest.approx(1e3)
+
+
+def test_asking_for_nothing_gives_nothing() -> None:
+    none = np.zeros(0, dtype=np.int64)
+    assert inverse_entries(assemble([]), np.array([0.0, 1.0]), none, none).shape == (0, 2)

@@ -371,3 +371,34 @@ def test_what_cannot_be_cut_is_said() -> None:
     unread = partition_of(sensed, {"u1": (amplifiers, [PortAt("in", "input", ("r1",))])}, ["in"])
     assert "f9 reads the current of rl" in str(return_ratios(unread, FREQUENCY)["u1.in"])
     assert loop_gains(unread, FREQUENCY) == {}
+
+
+def test_coupling_capacitors_at_direct_current() -> None:
+    """Outside, a capacitor leaves the stage's side as it is; inside, it lets no direct current in. Both answers
+    come with those above DC."""
+    text = """
+        v1 in 0
+        c1 in a 1e-6
+        r1 a m 1e4
+        rf m out 1e5
+        e1 out 0 0 m 1e5
+        c2 a m2 1e-6
+        r2 m2 o2 1e4
+        e2 o2 0 0 m2 1e5
+    """
+    stages = {
+        "u1": ([amplifier("e1", ("0", "m", "out"))], [PortAt("a", "input", ("r1",))]),
+        "u2": ([amplifier("e2", ("0", "m2", "o2"))], [PortAt("a", "input", ("c2",))]),
+    }
+    frequency = np.array([1e3, 0.0, 1e6])
+    parted = partition(text, stages, ["in"])
+    assert ratio_of(parted, "u1.a", frequency).impedance == near(np.full(3, 1e4 + 1e5 / (1 + 1e5)))
+    second = ratio_of(parted, "u2.a", frequency)
+    series = 1 / (2j * np.pi * frequency[[0, 2]] * 1e-6) + 1e4 / (1 + 1e5)
+    assert second.impedance[[0, 2]] == near(series)
+    assert second.impedance[1] == np.inf
+
+
+def test_a_stage_without_an_amplifier_has_a_reason() -> None:
+    parted = partition("v1 in 0\nr1 in 0 1e3", {"s": ([], [PortAt("in", "input", ("r1",))])}, ["in"])
+    assert return_ratios(parted, FREQUENCY)["s.in"] == "s has no amplifier"

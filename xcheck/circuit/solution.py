@@ -56,6 +56,8 @@ def inverse_entries(equations: Equations, frequency: Real, unknowns: Index, rows
     LEAST_CONDUCTANCE. Raises SingularCircuit, naming the unknowns, where there is no unique solution.
     """
     result = np.empty((len(unknowns), len(frequency)), dtype=np.complex128)
+    if not len(unknowns):
+        return result
     for dc in (False, True):
         chosen = np.flatnonzero((frequency == 0) == dc)
         if chosen.size:

@@ -23,6 +23,8 @@ def obstacles(partition: Partition) -> dict[str, str]:
 
 
 def _own_obstacle(partition: Partition, stage: Stage) -> str:
+    if not stage.amplifiers:
+        return f"{stage.name} has no amplifier"
     for amplifier in stage.amplifiers:
         if amplifier.open_loop.model is None:
             return _no_model(amplifier.name, amplifier.open_loop.reason)

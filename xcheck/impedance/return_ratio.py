@@ -55,8 +55,9 @@ def return_ratios(partition: Partition, frequency: Real) -> dict[str, ReturnRati
     answers: dict[str, ReturnRatio | str] = {
         port.subject: refused.get(stage.name, "") for stage in partition.stages for port in stage.ports
     }
-    amplifier = {port.subject: _amplifier_at(stage, port.node) for stage in partition.stages for port in stage.ports}
-    ports = [p for stage in partition.stages if stage.name not in refused for p in stage.ports]
+    stages = [stage for stage in partition.stages if stage.name not in refused]
+    amplifier = {port.subject: _amplifier_at(stage, port.node) for stage in stages for port in stage.ports}
+    ports = [port for stage in stages for port in stage.ports]
     batches, uncut = in_batches(partition.circuit, ports)
     answers.update(uncut)
     for batch in batches:
