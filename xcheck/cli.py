@@ -7,6 +7,7 @@ import os
 import re
 import sys
 from collections.abc import Callable
+from contextlib import suppress
 from pathlib import Path
 from typing import Any, NoReturn
 
@@ -250,12 +251,13 @@ def _write(text: str, out: Path | None) -> None:
         click.echo(text, nl=False)
         return
     # beside the target and renamed, so that a report is there whole or not at all
-    beside = out.with_name(out.name + ".part")
+    beside = out.parent / (out.name + ".part")
     try:
         beside.write_text(text, encoding="utf-8")
         beside.replace(out)
     except (OSError, ValueError) as error:
-        beside.unlink(missing_ok=True) if beside.parent.is_dir() else None
+        with suppress(OSError):
+            beside.unlink(missing_ok=True)
         raise OutputError(f"{out} cannot be written: {getattr(error, 'strerror', None) or error}") from error
 
 

@@ -7,7 +7,7 @@ from pathlib import Path
 
 MOST_BYTES = 64_000_000
 """Of all files of one deck; a deck beyond this is a mistake or an attack."""
-MOST_LINES = 300_000
+MOST_LINES = 150_000
 LONGEST_LINE = 100_000
 
 
@@ -34,10 +34,11 @@ def _bytes_of(path: Path, most_bytes: int) -> bytes:
         descriptor = os.open(path, os.O_RDONLY | os.O_NONBLOCK | os.O_CLOEXEC)
     except OSError as error:
         raise Unreadable(error.strerror or str(error)) from error
+    status = os.fstat(descriptor)
+    if not stat.S_ISREG(status.st_mode):
+        os.close(descriptor)
+        raise Unreadable("it is no regular file")
     with os.fdopen(descriptor, "rb") as file:
-        status = os.fstat(descriptor)
-        if not stat.S_ISREG(status.st_mode):
-            raise Unreadable("it is no regular file")
         if status.st_size > most_bytes:
             raise Unreadable(f"it is larger than {most_bytes // 1_000_000} MB")
         return file.read(most_bytes + 1)[:most_bytes]

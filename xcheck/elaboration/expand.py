@@ -19,7 +19,8 @@ from xcheck.elaboration.sources import source
 from xcheck.elaboration.words import Words, braced, words_of
 from xcheck.errors import CallError
 
-MOST_ELEMENTS = 300_000
+MOST_ELEMENTS = 250_000
+"""Made in all, those counted twice that are kept as an instance's own; far beyond any board."""
 DEEPEST_INSTANCE = 60
 
 MAKERS: Mapping[str, Callable[[Card, Problems], Maker | None]] = {
@@ -69,6 +70,7 @@ class _Elaboration:
         self.plans: dict[int, _Plan] = {}
         self.locals: dict[tuple[object, ...], tuple[Element, ...]] = {}
         self.full = False
+        self.made = 0
 
     def circuit(self, subckt: str | None) -> Circuit:
         self._functions(self.top)
@@ -224,7 +226,8 @@ class _Elaboration:
                 element = step(context)
                 if element is not None:
                     self.elements.append(element)
-            if len(self.elements) > MOST_ELEMENTS:
+                    self.made += 1
+            if self.made > MOST_ELEMENTS and not self.full:
                 self._stop(step.card if isinstance(step, _Call) else body_card(body, self.deck))
 
     def _stop(self, card: Card) -> None:

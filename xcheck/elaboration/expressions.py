@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 from xcheck.deck.numbers import read_number
 
-DEEPEST = 200
+DEEPEST = 60
 """Nesting of parentheses, signs and functions; an engineer's expression stays far below."""
 
 
@@ -120,7 +120,10 @@ def tokens_of(text: str) -> list[Token]:
 def parse(text: str) -> Node:
     """The tree of an expression. Raises ExpressionError."""
     parser = _Parser(tokens_of(text))
-    tree = parser.choice()
+    try:
+        tree = parser.choice()
+    except RecursionError:
+        raise ExpressionError(f"nested deeper than {DEEPEST}") from None
     rest = parser.peek()
     if rest.kind != "end":
         raise ExpressionError(f"`{rest.text}` was not expected", rest.start, rest.end)
@@ -283,6 +286,8 @@ class Evaluator:
         """The value of a tree. Raises ExpressionError (unknown name, no real value, too deep)."""
         try:
             result = self._value(tree, depth)
+        except RecursionError:
+            raise ExpressionError("nested too deep, or defined by itself") from None
         except (ValueError, OverflowError, ZeroDivisionError, TypeError) as error:
             raise ExpressionError(f"it has no value ({error})") from error
         if isinstance(result, complex) or not math.isfinite(result):

@@ -16,7 +16,7 @@ from xcheck.elaboration.expressions import (
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.words import braced
 
-DEEPEST_CHAIN = 150
+DEEPEST_CHAIN = 40
 """Parameters defined by parameters; order of definition makes longer chains unnecessary."""
 
 

@@ -62,7 +62,7 @@ class Engine:
             raise Refused("load", " / ".join(self._words()) or str(error)) from error
         words = self._words()
         self.messages += words
-        if not self.spice.listing().strip() or any("no circuit loaded" in w.lower() for w in words):
+        if any("no circuit loaded" in w.lower() for w in [*words, *self.command("listing")]):
             raise Refused("load", " / ".join(words) or "no circuit was loaded")
 
     def _words(self) -> list[str]:
@@ -89,8 +89,11 @@ def limit(job: dict[str, Any]) -> None:
     resource.setrlimit(resource.RLIMIT_FSIZE, (0, 0))
     resource.setrlimit(resource.RLIMIT_CORE, (0, 0))
     memory, seconds = int(job["memory_bytes"]), int(job["cpu_seconds"])
-    resource.setrlimit(resource.RLIMIT_AS, (memory, memory))
-    resource.setrlimit(resource.RLIMIT_CPU, (seconds, seconds + 5))
+    for what, soft, hard in ((resource.RLIMIT_AS, memory, memory), (resource.RLIMIT_CPU, seconds, seconds + 5)):
+        # a limit that is there already may only be lowered
+        most = resource.getrlimit(what)[1]
+        bounds = [n if most == resource.RLIM_INFINITY else min(n, most) for n in (soft, hard)]
+        resource.setrlimit(what, (bounds[0], bounds[1]))
 
 
 def probe(engine: Engine, send: Send) -> None:

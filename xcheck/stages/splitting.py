@@ -85,6 +85,8 @@ def _amplifiers_beyond(
 def _virtual_grounds(elements: Sequence[Element], amplifiers: Sequence[Amplifier], stiff: StiffNodes) -> dict[str, int]:
     """Inverting inputs that feedback holds still: the other input does not move, and a path of two-terminal
     elements leads from the amplifier's own output to them."""
+    if not amplifiers:
+        return {}
     still = {n for n, why in stiff.reasons.items() if n in stiff.still or why in ("rail", "reference")}
     quiet = still | _quiet_nodes(elements, stiff, still - stiff.signal)
     wanted = [k for k, a in enumerate(amplifiers) if a.non_inverting in quiet and a.inverting not in stiff.reasons]
