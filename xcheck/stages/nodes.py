@@ -7,7 +7,7 @@ from xcheck.circuit.elements import GROUND, Circuit, Controlled, Element, Passiv
 from xcheck.stages.types import Amplifier
 
 
-def _groups(circuit: Circuit) -> dict[str, list[Source]]:
+def sources_by_node(circuit: Circuit) -> dict[str, list[Source]]:
     """Voltage sources by node."""
     by_node: dict[str, list[Source]] = {}
     for element in circuit.elements:
@@ -17,9 +17,8 @@ def _groups(circuit: Circuit) -> dict[str, list[Source]]:
     return by_node
 
 
-def reach_by_sources(circuit: Circuit, start: Iterable[str]) -> dict[str, tuple[Source, ...]]:
+def reach_by_sources(by_node: Mapping[str, Sequence[Source]], start: Iterable[str]) -> dict[str, tuple[Source, ...]]:
     """Nodes that voltage sources tie to the start nodes, each with the sources on the way."""
-    by_node = _groups(circuit)
     reached: dict[str, tuple[Source, ...]] = dict.fromkeys(start, ())
     waiting = list(reached)
     while waiting:
@@ -35,7 +34,7 @@ def reach_by_sources(circuit: Circuit, start: Iterable[str]) -> dict[str, tuple[
 def held_still(circuit: Circuit) -> dict[str, str]:
     """Nodes that do not move at AC, each with the reason: ground and what voltage sources tie to it. A source's
     own AC part does not count: all but the test source are dead."""
-    reached = reach_by_sources(circuit, [GROUND])
+    reached = reach_by_sources(sources_by_node(circuit), [GROUND])
     return {n: f"voltage source {path[-1].name}" if path else "ground" for n, path in reached.items()}
 
 
@@ -56,7 +55,8 @@ def stiff_nodes(circuit: Circuit, amplifiers: Sequence[Amplifier], loose: Sequen
     reasons = dict(still)
     driver: dict[str, str] = {}
     signal: set[str] = set()
-    for node, path in reach_by_sources(circuit, [GROUND]).items():
+    by_node = sources_by_node(circuit)
+    for node, path in reach_by_sources(by_node, [GROUND]).items():
         if path:
             driver[node] = path[-1].name
         if any(s.ac is not None or s.transient for s in path):
@@ -66,7 +66,7 @@ def stiff_nodes(circuit: Circuit, amplifiers: Sequence[Amplifier], loose: Sequen
         if element.kind in "eh":
             outputs.update({n: element.name for n in element.nodes if n not in still})
     for node, name in outputs.items():
-        for other in reach_by_sources(circuit, [node]):
+        for other in reach_by_sources(by_node, [node]):
             if other not in reasons:
                 reasons[other] = f"output of {name}"
                 driver[other] = name
@@ -75,11 +75,6 @@ def stiff_nodes(circuit: Circuit, amplifiers: Sequence[Amplifier], loose: Sequen
             if rail is not None and rail not in reasons:
                 reasons[rail] = "rail"
     return StiffNodes(reasons, driver, frozenset(signal), still)
-
-
-def is_supply(node: str, amplifiers: Sequence[Amplifier]) -> bool:
-    """Whether a node feeds an amplifier's supply pin."""
-    return any(node in (a.positive_supply, a.negative_supply) for a in amplifiers)
 
 
 def admittance(element: Element, hertz: float) -> float:

@@ -8,7 +8,7 @@ from xcheck.errors import CallError
 from xcheck.finding import Finding
 from xcheck.place import Place
 from xcheck.stages.networks import Network
-from xcheck.stages.nodes import StiffNodes, is_supply
+from xcheck.stages.nodes import StiffNodes
 from xcheck.stages.types import Amplifier, Kind, Port, Side, Stage, Terminal
 
 MOST_CANDIDATES = 50
@@ -29,6 +29,7 @@ class PortFinder:
         self.shared = shared
         self.fed = fed
         self.boundary = frozenset(circuit.boundary)
+        self.supplies = {n for a in amplifiers for n in (a.positive_supply, a.negative_supply) if n is not None}
         home = {node: network for networks in fed for network in networks for node in network.nodes}
         self.fed_back = frozenset(
             a.inverting for a in amplifiers if a.inverting in home and a.output in home[a.inverting].edge
@@ -95,7 +96,7 @@ class PortFinder:
                 return "signal"
             if node in self.stiff.signal:
                 return "signal"
-            return None if why in ("rail", "ground") or is_supply(node, self.amplifiers) else "reference"
+            return None if why in ("rail", "ground") or node in self.supplies else "reference"
         if node in self.boundary:
             return "signal"
         terminals = self.at.get(node, [])
