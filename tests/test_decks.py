@@ -17,8 +17,8 @@ import pytest
 
 from xcheck.deck.numbers import read_number
 from xcheck.options import Options
-from xcheck.review import review
 from xcheck.reviewed import DeckReview, Evidence
+from xcheck.reviewing import review
 
 DECKS = sorted((Path(__file__).parent / "decks").glob("*.cir"))
 

@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 
 from xcheck.options import Options
-from xcheck.review import review
 from xcheck.reviewed import Evidence
+from xcheck.reviewing import review
 
 DECKS = sorted((Path(__file__).parent / "decks").glob("*.cir"))
 PASSIVE = re.compile(r"^(?P<name>[rc]\w*) (?P<a>\S+) (?P<b>\S+) (?P<rest>.*)$")

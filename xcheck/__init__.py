@@ -15,8 +15,8 @@ from xcheck.version import __version__
 if TYPE_CHECKING:
     from xcheck.finding import Finding
     from xcheck.options import Options
-    from xcheck.review import review
     from xcheck.reviewed import Outcome
+    from xcheck.reviewing import review
 
 __all__ = ["Finding", "Options", "Outcome", "__version__", "review"]
 
@@ -24,7 +24,7 @@ _HOME = {
     "Finding": "xcheck.finding",
     "Options": "xcheck.options",
     "Outcome": "xcheck.reviewed",
-    "review": "xcheck.review",
+    "review": "xcheck.reviewing",
 }
 
 

@@ -140,7 +140,7 @@ def review(decks: tuple[Path, ...], form: str, out: Path | None, fail_on: str, *
       xcheck review --band 20:20k --at 1k --fail-on warning board/
       xcheck review --format json --out review.json board/preamp.cir
     """
-    from xcheck.review import review as run
+    from xcheck.reviewing import review as run
 
     outcome = run(decks, options=_options(settings), progress=_progress())
     _write(_rendered(outcome, form, out), out)
@@ -187,7 +187,7 @@ def sweep(deck: Path, stage: str, port_name: str, side: str | None, out: Path | 
       xcheck sweep board/preamp.cir --stage xu1 --port in --out zin.svg
     """
     from xcheck.report import sweep as report
-    from xcheck.review import review as run
+    from xcheck.reviewing import review as run
 
     outcome = run(deck, options=_options(settings), progress=_progress())
     answer = outcome.decks[0].port(stage, port_name, side)
@@ -221,7 +221,7 @@ def _options(settings: dict[str, Any]) -> Any:
 
 def _evidence(deck: Path, settings: dict[str, Any]) -> Any:
     from xcheck.errors import DeckUnreadable
-    from xcheck.review import review as run
+    from xcheck.reviewing import review as run
 
     outcome = run(deck, options=_options({**settings, "engine": "none"}))
     evidence = outcome.decks[0].evidence

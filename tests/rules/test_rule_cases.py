@@ -7,7 +7,7 @@ from rule_cases import Case, all_cases
 
 from xcheck.deck.reader import read_text
 from xcheck.options import Options
-from xcheck.review import analyse
+from xcheck.reviewing import analyse
 from xcheck.rules import RULES
 from xcheck.simulate.types import EngineInfo
 

@@ -8,11 +8,11 @@ from dataclasses import dataclass
 
 SCALES = {
     "t": 1e12, "g": 1e9, "meg": 1e6, "k": 1e3, "mil": 25.4e-6, "m": 1e-3, "u": 1e-6, "n": 1e-9, "p": 1e-12,
-    "f": 1e-15, "a": 1e-18,
+    "f": 1e-15,
 }  # fmt: skip
 _NUMBER = re.compile(
     r"(?P<digits>[+-]?(?:\d+\.?\d*|\.\d+)(?:[eEdD][+-]?\d+)?)"
-    r"(?P<scale>meg|mil|[tgkmunpfa])?(?P<rest>.*)",
+    r"(?P<scale>meg|mil|[tgkmunpf])?(?P<rest>.*)",
     re.IGNORECASE | re.DOTALL,
 )
 

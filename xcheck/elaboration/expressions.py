@@ -249,7 +249,7 @@ FUNCTIONS: Mapping[str, tuple[int, int, Callable[..., float]]] = {
     "tan": (1, 1, math.tan), "asin": (1, 1, math.asin), "acos": (1, 1, math.acos), "atan": (1, 1, math.atan),
     "arctan": (1, 1, math.atan), "sinh": (1, 1, math.sinh), "cosh": (1, 1, math.cosh), "tanh": (1, 1, math.tanh),
     "asinh": (1, 1, math.asinh), "acosh": (1, 1, math.acosh), "atanh": (1, 1, math.atanh),
-    "pow": (2, 2, _power), "pwr": (2, 2, lambda a, b: math.copysign(abs(a) ** b, a)),
+    "pow": (2, 2, _power), "pwr": (2, 2, lambda a, b: abs(a) ** b),
     "min": (2, 2, min), "max": (2, 2, max), "int": (1, 1, lambda a: float(math.trunc(a))),
     "nint": (1, 1, lambda a: float(round(a))), "floor": (1, 1, lambda a: float(math.floor(a))),
     "ceil": (1, 1, lambda a: float(math.ceil(a))), "sgn": (1, 1, lambda a: float((a > 0) - (a < 0))),

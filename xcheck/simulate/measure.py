@@ -63,6 +63,9 @@ def measure(
         found.failure, found.failed_step = str(ended), ended.step
     values: dict[str, Complex] = {}
     for subject, (voltage, current) in found.raw.items():
+        if len(voltage) != len(frequency) or len(current) != len(frequency):
+            unmeasured[subject] = f"ngspice gave {len(voltage)} of {len(frequency)} points"
+            continue
         value = impedance(cuts[subject][0], voltage[order], current[order])
         if np.all(np.isfinite(value)):
             values[subject] = value
@@ -107,7 +110,7 @@ class _Found:
                 self.operating_point = {n: v for n, v in answer["voltages"].items() if not _is_ours(n)}
                 self.currents = {_our_name(n): v for n, v in answer["currents"].items() if not _is_ours(n)}
             case "port":
-                pair = [np.array(answer[k], dtype=np.float64) for k in ("voltage", "current")]
+                pair = [np.array(answer[k], dtype=np.float64).reshape(-1, 2) for k in ("voltage", "current")]
                 voltage, current = (a[:, 0] + 1j * a[:, 1] for a in pair)
                 self.raw[answer["subject"]] = (voltage, current)
             case "unmeasured":
