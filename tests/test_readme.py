@@ -1,0 +1,28 @@
+"""The README's first output is what the command prints, and the files it names are there."""
+
+import re
+from pathlib import Path
+
+import pytest
+
+import xcheck
+from xcheck.report import text
+
+ROOT = Path(__file__).parent.parent
+README = (ROOT / "README.md").read_text(encoding="utf-8")
+
+
+@pytest.mark.engine
+def test_the_shown_review_is_the_real_one(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(ROOT)
+    shown = text.render(xcheck.review("netlists/lantern_light.cir"), width=100, symbols=True)
+    block = "\n".join("    " + line if line else "" for line in shown.rstrip().splitlines())
+    # the version of ngspice is the reader's own
+    generic = re.sub(r"ngspice \d+", "ngspice N", block)
+    assert generic in re.sub(r"ngspice \d+", "ngspice N", README)
+
+
+def test_files_that_are_named_are_there() -> None:
+    developers = (ROOT / "DEVELOPERS.md").read_text(encoding="utf-8")
+    for name in re.findall(r"`?((?:xcheck|ci|netlists|tests)/[\w./]*\w)", README + developers):
+        assert (ROOT / name).exists(), name
