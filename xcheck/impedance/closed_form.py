@@ -16,6 +16,8 @@ from xcheck.topologies.sketch import network_of, still_nodes
 
 NO_FORM = ("unclassified", "comparator", "schmitt-trigger")
 DEFAULT_BAND = (10.0, 10e3)
+MOST_UPSTREAM = 50
+"""Stages looked through for a common source; a longer chain counts as having one."""
 
 
 @dataclass(frozen=True)
@@ -44,6 +46,7 @@ class _Evaluation:
         self.outer: dict[str, Outside] = {}
         self.found: dict[str, ClosedForm | str] = {}
         self.busy: set[str] = set()
+        self.driver = {p.node: s.name for s in partition.stages for p in s.ports if p.side == "output"}
 
     def run(self) -> Forms:
         # outputs first and in deck order, inputs from the end of the chain: each then finds what it looks out
@@ -92,7 +95,11 @@ class _Evaluation:
         premises = [amplifier.open_loop.reason] if not amplifier.open_loop.exact else []
         premises += self._soft_nodes(stage)
         shunts, ground_too, dropped = self._sources(stage, port)
-        premises += dropped
+        if dropped:
+            # a source of unknown impedance can change everything behind it: no number is better than a wrong one
+            return f"no closed form: {'; '.join(dropped)}"
+        if self._reconverges(stage):
+            premises.append("two inputs come from one stage, and are taken as independent")
         drawn = self._draw(stage, port, network, shunts, ground_too)
         if isinstance(drawn, str):
             return f"no closed form: {drawn}"
@@ -109,6 +116,29 @@ class _Evaluation:
             side, response, places, links, value, self.middle, float(self.frequency[self.middle])
         )
         return ClosedForm(formula, numbers, value, rule, rule_text, not premises, tuple(premises))
+
+    def _reconverges(self, stage: Stage) -> bool:
+        """Whether two inputs are driven, directly or through other stages, by one and the same stage."""
+        driven = [d for p in stage.ports if p.side == "input" for d in [self.driver.get(p.node)] if d is not None]
+        if len(driven) < 2:
+            return False
+        seen: set[str] = set()
+        for first in dict.fromkeys(driven):
+            upstream: set[str] = set()
+            waiting = [first]
+            while waiting:
+                name = waiting.pop()
+                if name in upstream:
+                    continue
+                upstream.add(name)
+                if len(upstream) > MOST_UPSTREAM:
+                    return True
+                ports = self.stages[name].ports
+                waiting += [d for p in ports if p.side == "input" for d in [self.driver.get(p.node)] if d is not None]
+            if upstream & seen:
+                return True
+            seen |= upstream
+        return len(driven) != len(set(driven))
 
     def _soft_nodes(self, stage: Stage) -> list[str]:
         """Rails and references that the drawing takes as ground although they move a little, where it matters."""

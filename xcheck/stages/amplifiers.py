@@ -89,7 +89,7 @@ class _Search:
         power = {**supplies([p for p, _ in instance.pins], instance.comments, signal), **(told.roles if told else {})}
         members = self.members[instance.name]
         if devices:
-            reason = f"`{devices[0].name}` in `{instance.subckt}` is a {devices[0].reason}: no linear model is known"
+            reason = f"no linear model is known for `{devices[0].name}` in `{instance.subckt}` ({devices[0].reason})"
             loop = OpenLoop({}, None, exact=False, reason=reason)
             first = next((e for e in members if isinstance(e, (Controlled, Device))), members[0])
             gain_element = first.name

@@ -88,7 +88,8 @@ def _virtual_grounds(elements: Sequence[Element], amplifiers: Sequence[Amplifier
     if not amplifiers:
         return {}
     still = {n for n, why in stiff.reasons.items() if n in stiff.still or why in ("rail", "reference")}
-    quiet = still | _quiet_nodes(elements, stiff, still - stiff.signal)
+    # an input that carries a signal moves the other one with it, so it makes no virtual ground
+    quiet = (still - stiff.signal) | _quiet_nodes(elements, stiff, still - stiff.signal)
     wanted = [k for k, a in enumerate(amplifiers) if a.non_inverting in quiet and a.inverting not in stiff.reasons]
     if not wanted:
         return {}

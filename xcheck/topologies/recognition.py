@@ -44,6 +44,8 @@ def classify(partition: Partition, stage: Stage, band: tuple[float, float] = DEF
     drawn = sketch(partition, stage, band)
     if drawn.why_not:
         return Recognised("unclassified", drawn.why_not)
+    if drawn.bypass:
+        return Recognised("unclassified", drawn.seen + "; an input leads past the amplifier to the output")
     for s in (drawn, _references_as_signals(drawn)):
         for topology in TOPOLOGIES:
             if topology.fits(s):

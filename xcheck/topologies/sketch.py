@@ -14,6 +14,10 @@ CAPACITIVE = 3.0
 parallel to C that is |Zc| < R/3, for R in series with C it is |Zc| > 3 R."""
 
 
+LOADING = 0.05
+"""Share of gain below which a star's branch to ground counts as load inside the loop."""
+
+
 @dataclass(frozen=True)
 class Sketch:
     """Places of a stage. Signal and reference nodes that reach the inverting (n) and non-inverting (p) input, each
@@ -34,6 +38,7 @@ class Sketch:
     current_n: bool
     direct_p: str
     why_not: str = ""
+    bypass: bool = False
 
     @property
     def closed(self) -> bool:
@@ -142,6 +147,8 @@ def _draw(links: dict[Pair, Joined], inputs: dict[str, Port], n: str, p: str, o:
     }  # fmt: skip
     for node, port in inputs.items():
         for pin, name in ((n, "n"), (p, "p")):
+            if pin == GROUND:
+                continue
             joined = nothing if node == pin else between(node, pin)
             if joined is not None and not (node == n and port.current_driven):
                 reach[port.kind, name][node] = joined
@@ -154,8 +161,17 @@ def _draw(links: dict[Pair, Joined], inputs: dict[str, Port], n: str, p: str, o:
         feedback=between(n, o),
         positive=None if quiet else between(p, o),
         shorted=n == o,
-        ground_n=between(n, GROUND),
+        ground_n=_gain_leg(between(n, GROUND), between(n, o)),
         ground_p=between(p, GROUND),
         current_n=current,
         direct_p=p if p in inputs else "",
+        bypass=any(between(node, o) is not None for node in inputs if node not in (n, p)),
     )
+
+
+def _gain_leg(ground: Joined | None, feedback: Joined | None) -> Joined | None:
+    """What leads from the inverting input to ground; a load that hangs inside the feedback path draws a little too
+    (a star of isolation resistor, feedback and load), which is no gain leg."""
+    if ground is None or feedback is None or not ground.star:
+        return ground
+    return ground if abs(complex(ground.admittance[0] / feedback.admittance[0])) > LOADING else None
