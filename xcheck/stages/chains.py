@@ -67,6 +67,9 @@ def chain_from(first: Controlled, wiring: Wiring, still: Mapping[str, str]) -> C
             return None
     if abs(gain) <= LEAST_GAIN:
         return None
+    if source.kind in "gf" and not _fed_back(hop.node, (plus, minus), wiring):
+        # a transconductance with a load resistor has much gain too; feedback is what makes an op-amp of it
+        return None
     if gain < 0:
         plus, minus = minus, plus
     across = [
@@ -95,6 +98,12 @@ def _input_weights(source: Controlled) -> tuple[str, str, float] | None:
         if one * two < 0 and abs(one + two) < 1e-2 * abs(one):
             return (a, b, one)
     return None
+
+
+def _fed_back(output: str, inputs: tuple[str, str], wiring: Wiring) -> bool:
+    """Whether an output is an input, or one element away from it."""
+    beside = {n for e in wiring.ends.get(output, ()) if isinstance(e, Passive) for n in e.nodes}
+    return any(node in beside or node == output for node in inputs if node != GROUND)
 
 
 @dataclass(frozen=True, slots=True)
