@@ -85,6 +85,8 @@ def mesh(
         pair: Joined(branch.admittance(frequency), branch.text, branch.parts) for pair, branch in branches.items()
     }
     for node, admittance in shunts.items():
+        if not np.any(admittance):
+            continue  # an open source
         _merge(links, frozenset((node, GROUND)), Joined(admittance, "", ()))
     at: dict[str, set[str]] = {}
     for pair in links:
