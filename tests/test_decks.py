@@ -33,7 +33,8 @@ def expectations(path: Path) -> list[list[str]]:
 @pytest.fixture(scope="module", params=DECKS, ids=lambda p: p.stem)
 def reviewed(request: pytest.FixtureRequest) -> tuple[Path, DeckReview]:
     path: Path = request.param
-    return path, review([path], options=Options(engine="ngspice")).decks[0]
+    wide = tuple(float(f) for f in np.logspace(0, 7, 15))
+    return path, review([path], options=Options(engine="ngspice", spots=wide)).decks[0]
 
 
 def evidence_of(deck: DeckReview) -> Evidence:

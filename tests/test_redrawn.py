@@ -1,4 +1,4 @@
-"""The drawing of a circuit must not matter: order of cards, ends of two-terminal parts."""
+"""The drawing of a circuit must not matter: order of cards, names of nodes, ends of two-terminal parts."""
 
 import random
 import re
@@ -74,3 +74,34 @@ def test_order_of_cards_and_ends_of_parts_do_not_matter(path: Path, tmp_path: Pa
             if subject in plain:
                 assert (topology, side, kind) == plain[subject][:3], subject
                 assert np.allclose(ohm, plain[subject][3], rtol=1e-7)
+
+
+def renamed(text: str, names: set[str]) -> str:
+    """The deck with nodes of the top level renamed, wherever they stand as a word behind a card's first one."""
+    lines = []
+    inside = False
+    for line in text.splitlines():
+        low = line.lower()
+        inside = (inside or low.startswith(".subckt")) and not low.startswith(".ends")
+        if inside or line.startswith(("*", ".")) or low.startswith(".ends") or not lines:
+            lines.append(line)
+            continue
+        first, *rest = re.split(r"(\s+)", line)
+        words = [f"zz_{w.lower()}" if w.lower() in names else w for w in rest]
+        keep = f"zz_{first[1:].lower()}" if first.startswith("+") and first[1:].lower() in names else first
+        lines.append("".join([keep, *words]))
+    return "\n".join([*lines, ""])
+
+
+@pytest.mark.parametrize("path", DECKS, ids=lambda p: p.stem)
+def test_names_of_nodes_do_not_matter(path: Path, tmp_path: Path) -> None:
+    before = evidence_of(path)
+    names = {n for n in before.circuit.nodes if re.fullmatch(r"[a-z]\w*", n)}
+    other = tmp_path / "renamed.cir"
+    other.write_text(renamed(path.read_text(), names))
+    plain, again = by_port(before), by_port(evidence_of(other))
+    fresh = {subject.replace(".zz_", "."): found for subject, found in again.items()}
+    assert set(fresh) == set(plain)
+    for subject, (topology, side, kind, ohm) in fresh.items():
+        assert (topology, side, kind) == plain[subject][:3], subject
+        assert np.allclose(ohm, plain[subject][3], rtol=1e-7)

@@ -56,13 +56,14 @@ class Amount:
 
     __slots__ = ("card", "constant", "fault", "field", "tree")
 
-    def __init__(self, card: Card, field: Field) -> None:
+    def __init__(self, card: Card, field: Field, *, expression: bool = False) -> None:
+        """expression: the field is one even without braces, as behind `V=` of a B source."""
         self.card, self.field = card, field
         self.constant: float | None = None
         self.tree: Node | None = None
         self.fault: ExpressionError | None = None
         inside = braced(field.text)
-        number = read_number(field.text) if inside is None else None
+        number = read_number(field.text) if inside is None and not expression else None
         if number is not None:
             self.constant = number.value
             return

@@ -114,7 +114,7 @@ def behavioural(card: Card, problems: Problems) -> Maker | None:
 
 def _expression(card: Card, field: Field, kind: Kind) -> Maker:
     nodes = (card.fields[1].key, card.fields[2].key)
-    amount = Amount(card, field)
+    amount = Amount(card, field, expression=True)
 
     def make(context: Context) -> Element | None:
         name, origin = context.name(card), Origin(card, context.path)
