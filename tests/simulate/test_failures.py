@@ -9,8 +9,7 @@ from xcheck.deck.reader import read_text
 from xcheck.elaboration import elaborate
 from xcheck.options import Options
 from xcheck.reviewing import review
-from xcheck.simulate import measure
-from xcheck.simulate.engine import _probe
+from xcheck.simulate import find_engine, measure
 from xcheck.simulate.types import Simulation
 from xcheck.stages import find_amplifiers, split
 
@@ -73,8 +72,9 @@ def test_the_memory_limit_is_told() -> None:
     assert simulation.failure
 
 
-def test_a_library_that_is_not_there() -> None:
-    info = _probe("/nowhere/libngspice.so.0")
+def test_a_library_that_is_not_there(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setenv("NGSPICE_LIBRARY_PATH", "/nowhere/libngspice.so.0")
+    info = find_engine()
     assert not info.available
     assert "libngspice" in info.reason
 

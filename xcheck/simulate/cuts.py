@@ -1,130 +1,138 @@
 """Cuts in the user's own text: where a port's terminals part, a zero-volt source and a test current.
 
 A terminal of the flat circuit is followed outwards, from its element's card through the instance cards around it,
-to the scope that owns the node. There the fields on the node are told apart: those that carry only terminals of
-the stage's side and those that carry only others. Where one instance carries both, its subcircuit's text is
-looked into instead. The fields of one side then get a new node. A cut in a subcircuit's text stands in all
-its instances; zero volts change nothing there, and the test signal is given to one instance's source alone.
+to the scope that owns the node. There the fields on the node are told apart: those that carry only terminals of the
+stage, those that carry only others, and those of instances that carry both. The stage's fields get a new node, which
+the sources join to the old one. Where one instance carries all of the stage's terminals and others besides, the cut
+is written into its subcircuit's text instead; where they are spread over several scopes, the new node is global.
+
+The old node stays the hub at which the cuts of all its ports meet. A cut in a subcircuit's text stands in all its
+instances; zero volts change nothing there, and the test signal is given to one instance's source alone.
 """
 
-import re
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance
 from xcheck.deck.cards import Card
+from xcheck.simulate.terminals import Spot, node_spots, sensed_spots
 from xcheck.stages.types import Port
+
+InstancePath = tuple[str, ...]
+Edit = tuple[int, int, int]
+"""The identity of a card, and a range of offsets in its text."""
+
+
+StepKey = tuple[int, int, InstancePath]
+"""The identity of a card, the offset of the first place in its text, and the instances around it."""
 
 
 class NoCut(Exception):
     """Why no cut can be written for a port."""
 
 
+class Taken(Exception):
+    """A port's cut would move what another port's cut has moved in the same text."""
+
+
 @dataclass(frozen=True, slots=True)
 class Step:
-    """A field of a card in one scope through which a terminal is reached. field: its index, -1 for all that the
-    element senses at `word`; word: the node's name in that scope; path: instance names around, outermost first."""
+    """A node's name in one scope through which a terminal is reached. path: instance names around, outermost
+    first; spots: where it stands in the card, all with one word."""
 
-    path: tuple[str, ...]
+    path: InstancePath
     card: Card
-    field: int
-    word: str
+    spots: tuple[Spot, ...]
 
     @property
-    def key(self) -> tuple[int, int, tuple[str, ...]]:
-        return id(self.card), self.field, self.path
+    def word(self) -> str:
+        return self.spots[0].word
+
+    @property
+    def key(self) -> StepKey:
+        return id(self.card), self.spots[0].start, self.path
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class Cut:
-    """A cut written into a scope. name: unique; definition: the `.subckt` card of the scope, None at the top;
-    path: the instance whose copy of the cut belongs to this port; word: the node's name there; moved: the side
-    whose fields get the new node; inner: whether that is the stage's side."""
+    """A port's cut as ngspice knows it: flat names of the node on the stage's side and of the two test sources."""
 
-    name: str
-    definition: Card | None
-    path: tuple[str, ...]
-    word: str
-    moved: tuple[Step, ...]
-    inner: bool
-
-    @property
-    def node(self) -> str:
-        """The new node's name in its scope."""
-        return f"xc_{self.name}"
-
-    def flat(self, kind: str) -> str:
-        """ngspice's name for the voltage ('v') or current ('i') source of this port's copy of the cut."""
-        own = f"{kind}xc_{self.name}"
-        return own if not self.path else f"{kind}.{self.path[-1]}.{own}"
-
-    def stage_node(self, port: Port) -> str:
-        """ngspice's flat name of the node on the stage's side."""
-        if not self.inner:
-            return port.node
-        return self.node if not self.path else f"{self.path[-1]}.{self.node}"
+    node: str
+    voltage: str
+    current: str
 
 
 @dataclass
-class CutWriter:
-    """Places cuts and edits card texts."""
+class Need:
+    """What the text of one instance (or of the top) must hold. edits: new text by place; lines: added cards by cut;
+    alone: no other instance may have this text."""
 
-    circuit: Circuit
-    edits: dict[int, list[tuple[int, int, str]]] = field(default_factory=dict)
-    added: dict[int, list[str]] = field(default_factory=dict)
-    known: dict[tuple[object, ...], Cut] = field(default_factory=dict)
-    taken: dict[tuple[int, int, str], str] = field(default_factory=dict)
+    edits: dict[Edit, str] = field(default_factory=dict)
+    lines: dict[str, tuple[str, ...]] = field(default_factory=dict)
+    alone: bool = False
 
-    def __post_init__(self) -> None:
-        self.instances: dict[str, Instance] = {i.name: i for i in self.circuit.instances}
+    def clashes(self, edits: dict[Edit, str]) -> bool:
+        """Whether some edits put another text where these have put one."""
+        return any(self.edits.get(place, new) != new for place, new in edits.items())
+
+    def added(self) -> list[str]:
+        """The added cards."""
+        return [line for lines in self.lines.values() for line in lines]
+
+
+class Terminals:
+    """The terminals of a circuit in the user's text."""
+
+    def __init__(self, circuit: Circuit) -> None:
+        self.instances: dict[str, Instance] = {i.name: i for i in circuit.instances}
         self.at: dict[str, list[tuple[Element, int]]] = {}
-        for element in self.circuit.elements:
+        for element in circuit.elements:
             for index, node in enumerate(element.nodes):
                 self.at.setdefault(node, []).append((element, index))
             if isinstance(element, (Controlled, Device)):
                 for node in dict.fromkeys(element.sensing):
                     self.at.setdefault(node, []).append((element, -1))
-        self.everywhere = {f.key for card in self.circuit.deck.cards if card.kind == ".global" for f in card.fields[1:]}
+        cards = circuit.deck.cards
+        self.everywhere = {f.key for card in cards if card.kind == ".global" for f in card.fields[1:]}
 
-    def cut(self, port: Port) -> Cut:
-        """Writes a port's cut. Raises NoCut."""
+    def sides(self, port: Port) -> tuple[list[tuple[Step, ...]], list[tuple[Step, ...]]]:
+        """The ways from the owning scope to each terminal, outermost step first: of the stage, and of the rest."""
         wanted = {(t.element, t.index) for t in port.inside}
         inside: list[tuple[Step, ...]] = []
         outside: list[tuple[Step, ...]] = []
         for element, index in self.at.get(port.node, ()):
             side = inside if (element.name, index) in wanted else outside
-            side += [self._chain(step) for step in self._first_steps(element, index, port.node)]
-        if not inside:
-            raise NoCut(f"nothing of the stage was found at node `{port.node}`")
-        moved, inner = _side_to_move(inside, outside)
-        return self._write(moved, inner)
+            side += [self._way(step) for step in self._first_steps(element, index, port.node)]
+        return inside, outside
 
     def _first_steps(self, element: Element, index: int, node: str) -> list[Step]:
-        """The step at an element's own card: its node field, or each name by which it senses the node."""
+        """The step at an element's own card: its node, or each name by which it senses the node."""
         card, path = element.origin.card, element.origin.path
-        if index < 0:
-            words = [w for w in _words_sensed(card) if self._flat(w, path) == node]
-            if words:
-                return [Step(path, card, -1, word) for word in dict.fromkeys(words)]
-        elif len(card.fields) > index + 1 and self._flat(card.fields[index + 1].key, path) == node:
-            return [Step(path, card, index + 1, card.fields[index + 1].key)]
-        raise NoCut(f"the node field of `{card.fields[0].text}` could not be told in its card")
+        spots = sensed_spots(card) if index < 0 else node_spots(card)[index : index + 1]
+        by_word: dict[str, list[Spot]] = {}
+        for spot in spots:
+            if self.flat(spot.word, path) == node:
+                by_word.setdefault(spot.word, []).append(spot)
+        if not by_word:
+            raise NoCut(f"node `{node}` was not found in the card of `{card.fields[0].text}`")
+        return [Step(path, card, tuple(found)) for found in by_word.values()]
 
-    def _chain(self, step: Step) -> tuple[Step, ...]:
-        """The steps from the scope that owns the node down to a terminal, outermost first."""
+    def _way(self, step: Step) -> tuple[Step, ...]:
         steps = [step]
         while step.path:
             instance = self.instances[step.path[-1]]
-            pins = [pin for pin, _ in instance.pins]
-            if step.word not in pins:
+            position = next((k for k, (pin, _) in enumerate(instance.pins) if pin == step.word), None)
+            if position is None:
                 break
-            position = pins.index(step.word) + 1
-            card = instance.origin.card
-            step = Step(instance.origin.path, card, position, card.fields[position].key)
+            card, path = instance.origin.card, instance.origin.path
+            spots = node_spots(card)[position : position + 1]
+            if not spots or self.flat(spots[0].word, path) != instance.pins[position][1]:
+                raise NoCut(f"a node was not found in the card of `{card.fields[0].text}`")
+            step = Step(path, card, spots)
             steps.append(step)
         return tuple(reversed(steps))
 
-    def _flat(self, word: str, path: tuple[str, ...]) -> str:
+    def flat(self, word: str, path: InstancePath) -> str:
         """The flat name of a node that the text inside an instance calls `word`."""
         if word in ("0", "gnd"):
             return GROUND
@@ -135,101 +143,124 @@ class CutWriter:
             return outer
         return word if word in self.everywhere else f"{path[-1]}.{word}"
 
-    def _write(self, moved: Sequence[Step], inner: bool) -> Cut:
-        path, word = moved[0].path, moved[0].word
-        if any(s.path != path or s.word != word for s in moved):
-            raise NoCut("the terminals of one side are spread over several subcircuits")
-        if word in _spellings(GROUND):
-            raise NoCut("the node is ground")
-        definition = self.instances[path[-1]].definition if path else None
-        place = (id(definition), word, frozenset((id(s.card), s.field) for s in moved), inner)
-        earlier = self.known.get(place)
-        if earlier is not None:
-            return Cut(earlier.name, definition, path, word, tuple(moved), inner)
+
+class CutWriter:
+    """Collects the cuts that one load of the deck holds. root: what ngspice puts before the names of all that the
+    circuit has at its top; mark: begins all names that are added, and nothing in the deck contains it."""
+
+    def __init__(self, terminals: Terminals, mark: str, root: str = "") -> None:
+        self.terminals = terminals
+        self.mark = mark
+        self.root = root
+        self.needs: dict[InstancePath, Need] = {}
+        self.globals: list[str] = []
+        self._known: dict[tuple[object, ...], str] = {}
+        self._count = 0
+
+    def cut(self, port: Port) -> Cut:
+        """Writes a port's cut. Raises NoCut, Taken."""
+        if port.node == GROUND:
+            raise NoCut("the port is ground")
+        inside, outside = self.terminals.sides(port)
+        if not inside:
+            raise NoCut(f"nothing of the stage was found at node `{port.node}`")
+        moved, shared = told_apart(inside, outside)
+        places = {(step.path, step.word) for step in moved}
+        if not shared and len(places) == 1:
+            return self._local(moved, *next(iter(places)))
+        hubs = {(way[0].path, way[0].word) for way in (*inside, *outside)}
+        return self._spread(moved, *(next(iter(hubs)) if len(hubs) == 1 else ((), port.node)))
+
+    def _local(self, moved: Sequence[Step], path: InstancePath, word: str) -> Cut:
+        """A cut within one scope, under one name in all instances of that text."""
+        scope = id(self.terminals.instances[path[-1]].definition) if path else 0
+        key = (scope, word, frozenset((id(step.card), spot.start) for step in moved for spot in step.spots))
+        name = self._known.get(key) or self._next()
+        need = self.needs.get(path, Need())
+        edits = _edits(moved, name)
+        if need.clashes(edits):
+            raise Taken
+        self._known[key] = name
+        need.edits |= edits
+        need.lines[name] = _sources(name, word)
+        self.needs[path] = need
+        around = self._around(path)
+        return Cut(".".join((*around, name)), _device("v", around, name), _device("i", around, name))
+
+    def _spread(self, moved: Sequence[Step], path: InstancePath, word: str) -> Cut:
+        """A cut whose new node is global, because the stage's terminals are in several scopes."""
+        name = self._next()
+        by_path: dict[InstancePath, dict[Edit, str]] = {path: {}}
         for step in moved:
-            if (id(step.card), step.field, step.word) in self.taken:
-                raise NoCut("another port's cut stands in the same text in another way")
-        cut = Cut(str(len(self.known) + 1), definition, path, word, tuple(moved), inner)
-        self.known[place] = cut
-        for step in moved:
-            self.taken[id(step.card), step.field, step.word] = cut.name
-            self.edits.setdefault(id(step.card), []).extend(_renamings(step, cut.node))
-        new, old = cut.node, word
-        stage, rest = (new, old) if inner else (old, new)
-        lines = [f"vxc_{cut.name} {rest} {stage} dc 0 ac 0", f"ixc_{cut.name} 0 {stage} dc 0 ac 0"]
-        self.added.setdefault(id(definition), []).extend(lines)
-        return cut
+            by_path.setdefault(step.path, {}).update(_edits([step], name))
+        if any(self.needs.get(place, Need()).clashes(edits) for place, edits in by_path.items()):
+            raise Taken
+        for place, edits in by_path.items():
+            need = self.needs.setdefault(place, Need())
+            need.edits |= edits
+            need.alone = True
+        self.needs[path].lines[name] = _sources(name, word)
+        self.globals.append(name)
+        around = self._around(path)
+        return Cut(name, _device("v", around, name), _device("i", around, name))
 
-    def text_of(self, card: Card) -> str:
-        """A card's text with its edits."""
-        text = card.text
-        for start, end, new in sorted(set(self.edits.get(id(card), ())), reverse=True):
-            text = text[:start] + new + text[end:]
-        return text
+    def _around(self, path: InstancePath) -> tuple[str, ...]:
+        """What ngspice puts before the names of a scope."""
+        return tuple(name for name in (self.root, *path[-1:]) if name)
+
+    def _next(self) -> str:
+        self._count += 1
+        return f"{self.mark}{self._count}"
 
 
-def _side_to_move(inside: Sequence[tuple[Step, ...]], outside: Sequence[tuple[Step, ...]]) -> tuple[list[Step], bool]:
-    """The fields to move to a new node, and whether they are the stage's side."""
+def told_apart(inside: Sequence[tuple[Step, ...]], outside: Sequence[tuple[Step, ...]]) -> tuple[list[Step], bool]:
+    """The steps that carry only terminals of the stage, as far out as may be; and whether the instances that carry
+    both had to be entered side by side, so that no one scope holds them all. Raises NoCut."""
     level = 0
-    descended: bool | None = None
     while True:
-        here = {c[level].key for c in inside}
-        there = {c[level].key for c in outside if len(c) > level}
-        mixed = here & there
+        pure, mixed = _at_level(inside, outside, level)
         if not mixed:
-            inner = descended is not False
-            chosen = inside if inner else outside
-            return list({c[level].key: c[level] for c in chosen}.values()), inner
-        if len(mixed) > 1:
-            raise NoCut("the stage and the rest meet at this node in several subcircuits at once")
-        key = next(iter(mixed))
-        if here == {key} and descended is not False:
-            outside = [c for c in outside if c[level].key == key]
-            descended = True
-        elif there == {key} and descended is not True:
-            inside = [c for c in inside if c[level].key == key]
-            descended = False
-        else:
-            raise NoCut("the stage's terminals at this node are spread over several subcircuits")
+            return pure, False
+        if pure or len(mixed) > 1:
+            return _entered(inside, outside, level), True
+        # one instance holds all of the stage's terminals, and others too: the cut goes into its text
+        outside = [way for way in outside if len(way) > level and way[level].key in mixed]
         level += 1
-        if any(len(c) <= level for c in (*inside, *outside)):
-            raise NoCut("one element's field carries both sides of this node")
 
 
-def _words_sensed(card: Card) -> list[str]:
-    """All words of a card that can name a node it senses, lower case."""
-    words: list[str] = []
-    for target in card.fields[3:]:
-        if target.text[0] in "({'\"" or "(" in target.text:
-            words += [w.lower() for w in re.findall(r"[^\s,(){}'\"]+", target.text)]
-        else:
-            words.append(target.key)
-    return words
+def _at_level(
+    inside: Iterable[tuple[Step, ...]], outside: Iterable[tuple[Step, ...]], level: int
+) -> tuple[list[Step], set[StepKey]]:
+    """The stage's steps at a level that carry nothing else, and the keys of those that carry both."""
+    others = {way[level].key for way in outside if len(way) > level}
+    here: dict[StepKey, Step] = {}
+    for way in inside:
+        if len(way) <= level:
+            raise NoCut(f"one field of `{way[-1].card.fields[0].text}` carries both sides of this node")
+        here[way[level].key] = way[level]
+    return [step for key, step in here.items() if key not in others], others & set(here)
 
 
-def _spellings(word: str) -> tuple[str, ...]:
-    return ("0", "gnd") if word in ("0", "gnd") else (word,)
+def _entered(inside: Sequence[tuple[Step, ...]], outside: Sequence[tuple[Step, ...]], level: int) -> list[Step]:
+    """The stage's own steps below a level, each as far out as may be."""
+    pure, mixed = _at_level(inside, outside, level)
+    for key in mixed:
+        below = [way for way in inside if way[level].key == key]
+        beside = [way for way in outside if len(way) > level and way[level].key == key]
+        pure += _entered(below, beside, level + 1)
+    return pure
 
 
-def _renamings(step: Step, new: str) -> Iterable[tuple[int, int, str]]:
-    """Edits of a card's text that put a new node into a field, or everywhere where the element senses it."""
-    card = step.card
-    if step.field >= 0:
-        target = card.fields[step.field]
-        yield target.start, target.end, new
-        return
-    for target in card.fields[3:]:
-        if target.key == step.word:
-            yield target.start, target.end, new
-        elif target.text.startswith("("):
-            yield from _inside(target.text, target.start, step.word, new)
-        elif target.text[0] in "{'\"" or "(" in target.text:
-            for probe in re.finditer(r"\bv\s*\(([^()]*)\)", target.text, re.IGNORECASE):
-                yield from _inside(probe.group(1), target.start + probe.start(1), step.word, new)
+def _edits(steps: Iterable[Step], new: str) -> dict[Edit, str]:
+    return {(id(step.card), spot.start, spot.end): new for step in steps for spot in step.spots}
 
 
-def _inside(text: str, offset: int, word: str, new: str) -> Iterable[tuple[int, int, str]]:
-    """Whole words among nodes separated by blanks, commas and parentheses."""
-    for found in re.finditer(r"[^\s,()]+", text):
-        if found.group().lower() == word:
-            yield offset + found.start(), offset + found.end(), new
+def _sources(name: str, hub: str) -> tuple[str, ...]:
+    """The cut: current through the voltage source counts from the hub into the stage."""
+    return f"v{name} {hub} {name} dc 0 ac 0", f"i{name} 0 {name} dc 0 ac 0"
+
+
+def _device(letter: str, around: tuple[str, ...], name: str) -> str:
+    """ngspice's name for a source inside an instance: `v.x1.vname`."""
+    own = letter + name
+    return ".".join((letter, *around, own)) if around else own

@@ -2,24 +2,35 @@
 
 import math
 import re
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 
 from xcheck.circuit.arrays import Complex, Real
-from xcheck.circuit.elements import Circuit, Source
+from xcheck.circuit.elements import Circuit
 from xcheck.deck.cards import Card, Deck
-from xcheck.simulate.cuts import Cut, CutWriter, NoCut
+from xcheck.simulate.cuts import Cut, CutWriter, NoCut, Taken, Terminals
 from xcheck.simulate.engine import find_engine
-from xcheck.simulate.process import WorkerEnded, answers_of
-from xcheck.simulate.sanitize import ac_part, harmless, options_text
-from xcheck.simulate.types import Simulation
+from xcheck.simulate.process import WORKER, WorkerEnded, answers_of
+from xcheck.simulate.sanitize import Harmless, harmless
+from xcheck.simulate.size import MOST_ELEMENTS, expanded_size
+from xcheck.simulate.sweeps import Sweeps, sweeps_of
+from xcheck.simulate.types import EngineInfo, Simulation
+from xcheck.simulate.written import blocks_of, deck_lines, reviewed_block, unused_mark
 from xcheck.stages.types import Partition, Port
 
 TIME_LIMIT = 120.0
-MEMORY_LIMIT = 4_000_000_000
-TITLE = "deck under review"
+"""Seconds of wall time for all ports of a deck."""
+MEMORY_LIMIT = 2_000_000_000
+"""Bytes of address space of the worker, ngspice's code and Python included."""
+SAME_POINT = 1e-9
+"""Relative distance of ngspice's frequency from the one asked for."""
+LEAST_SHARE = 1e-9
+"""The least part of the test current that may be left to a port. It is 1 A less what flows into the outside, known to
+about 1e-16 A, so the figures of a smaller part would be rounding errors."""
+CODE_MODELS_MISSING = "ngspice's code models are missing; on Debian and Ubuntu the package `ngspice` brings them"
 
 
 def measure(
@@ -31,88 +42,154 @@ def measure(
     time_limit: float = TIME_LIMIT,
     memory_limit: int = MEMORY_LIMIT,
     progress: Callable[[int, int], None] | None = None,
+    engine: EngineInfo | None = None,
+    command: Sequence[str] = WORKER,
 ) -> Simulation:
-    """The impedance of each port (ohm, shape (F,) on `frequency` in Hz), in the deck as it stands.
+    """The impedance of each port (ohm, shape (F,) on `frequency`, Hz, ascending), in the deck as it stands.
 
     input: 1 V in series in the cut, Z = V(stage side) / I(into the stage); outputs and current-driven inputs: 1 A
-    into the stage's side, Z = V / (1 A - I(cut, into the outside)). What fails is in the result.
+    into the stage's side, Z = V / (1 A - I(cut, into the outside)). progress is told the ports done and all ports.
+    engine and command: which ngspice, and what is run for it. What fails is in the result; nothing is raised.
     """
-    engine = find_engine()
-    if not engine.available:
-        return Simulation(engine, failure=engine.reason, failed_step="load")
-    writer = CutWriter(circuit)
-    unmeasured: dict[str, str] = {}
-    cuts: dict[str, tuple[Port, Cut]] = {}
-    for stage in partition.stages:
-        for port in stage.ports:
-            try:
-                cuts[port.subject] = (port, writer.cut(port))
-            except NoCut as why:
-                unmeasured[port.subject] = f"no cut could be written into the deck: {why}"
-    lines, left_out = deck_lines(deck, circuit, partition, writer)
-    sweeps, order = sweeps_of(frequency)
+    engine = find_engine() if engine is None else engine
+    ports = {port.subject: port for stage in partition.stages for port in stage.ports}
+    sane = harmless(deck.cards, deck.after_end)
+    fault = engine.reason if not engine.available else _why_not(sane, circuit)
+    if fault:
+        return Simulation(
+            engine, unmeasured=dict.fromkeys(ports, fault), failure=fault, failed_step="load", left_out=sane.left_out
+        )
+    plan = planned(sane.cards, circuit, partition, ports)
+    sweeps = sweeps_of(frequency)
+    first = float(frequency[0])
     job = {
-        "task": "measure", "deck": lines, "sweeps": sweeps, "memory_bytes": memory_limit,
-        "cpu_seconds": math.ceil(time_limit), "ports": [_port_job(port, cut) for port, cut in cuts.values()],
+        "task": "measure", "loads": plan.loads, "sweeps": sweeps.commands, "glance": f"ac lin 1 {first!r} {first!r}",
+        "memory_bytes": memory_limit, "cpu_seconds": math.ceil(time_limit) + 1,
     }  # fmt: skip
-    found = _Found(len(cuts), progress)
+    found = _Found(plan, len(plan.cuts), progress)
     try:
-        for answer in answers_of(job, engine.library, time_limit):
+        for answer in answers_of(job, engine.library, time_limit, command):
             found.take(answer)
     except WorkerEnded as ended:
         found.failure, found.failed_step = str(ended), ended.step
-    values: dict[str, Complex] = {}
-    for subject, (voltage, current) in found.raw.items():
-        if len(voltage) != len(frequency) or len(current) != len(frequency):
-            unmeasured[subject] = f"ngspice gave {len(voltage)} of {len(frequency)} points"
+    return found.simulation(engine, frequency, sweeps, ports, sane.left_out)
+
+
+def _why_not(sane: Harmless, circuit: Circuit) -> str:
+    """Why a deck is not handed to ngspice at all, '' where it is."""
+    used = {id(e.origin.card) for e in circuit.elements}
+    missing = [card for card in sane.refused if id(card) in used]
+    if missing:
+        named = ", ".join(f"`{c.fields[0].text}` ({c.place()})" for c in missing[:3])
+        return f"{named} may not be handed to ngspice, and without it the circuit would be another one"
+    size = expanded_size(blocks_of(sane.cards))
+    if size > MOST_ELEMENTS:
+        count = "endless" if math.isinf(size) else f"{size:.0f} elements"
+        return f"the deck is too large for a simulation: expanded it is {count}, {MOST_ELEMENTS} may be"
+    return ""
+
+
+@dataclass
+class Plan:
+    """What the worker gets. loads: lines and ports; cuts: by port subject; refused: why a port has none; mark: begins
+    the names of all that was added; root: of the instance that stands for the reviewed block, '' without one."""
+
+    loads: list[dict[str, Any]]
+    cuts: dict[str, Cut]
+    refused: dict[str, str]
+    mark: str
+    root: str = ""
+
+
+def planned(cards: tuple[Card, ...], circuit: Circuit, partition: Partition, ports: Mapping[str, Port]) -> Plan:
+    """The deck with cuts. One load serves all ports, unless two of them would move the same terminals."""
+    top = blocks_of(cards)
+    block = reviewed_block(circuit, top)
+    mark = unused_mark(cards)
+    plan = Plan([], {}, {}, mark, f"x{mark}" if block is not None else "")
+    terminals = Terminals(circuit)
+    writers: list[tuple[CutWriter, list[Port]]] = []
+    for port in ports.values():
+        try:
+            plan.cuts[port.subject] = _placed(port, writers, terminals, plan)
+        except NoCut as why:
+            plan.refused[port.subject] = f"no cut could be written into the deck: {why}"
+    for writer, served in writers or [(CutWriter(terminals, mark, plan.root), [])]:
+        try:
+            lines = deck_lines(top, block, writer, circuit, partition)
+        except NoCut as why:
+            for port in served:
+                del plan.cuts[port.subject]
+                plan.refused[port.subject] = f"no cut could be written into the deck: {why}"
             continue
-        value = impedance(cuts[subject][0], voltage[order], current[order])
-        if np.all(np.isfinite(value)):
-            values[subject] = value
-        else:
-            unmeasured[subject] = "no current flows into the port: its impedance is beyond measure"
-    for subject in cuts:
-        if subject not in values and subject not in unmeasured:
-            unmeasured[subject] = found.refused.get(subject, found.failure or "ngspice gave no result")
-    return Simulation(
-        engine, values, unmeasured, found.operating_point, found.currents, found.failure, found.failed_step,
-        tuple(found.messages), left_out,
-    )  # fmt: skip
+        plan.loads.append({"lines": lines, "ports": [_port_job(port, plan.cuts[port.subject]) for port in served]})
+    return plan
 
 
-def impedance(port: Port, voltage: Complex, current: Complex) -> Complex:
-    """A port's impedance from the voltage on the stage's side and the cut's current into the stage."""
-    with np.errstate(divide="ignore", invalid="ignore"):
-        if port.side == "input" and not port.current_driven:
-            return voltage / current
-        # the cut's current counts from the outside into the stage; 1 A - I(outside) is 1 A + that
-        return voltage / (1.0 + current)
+def _placed(port: Port, writers: list[tuple[CutWriter, list[Port]]], terminals: Terminals, plan: Plan) -> Cut:
+    for writer, served in writers:
+        try:
+            cut = writer.cut(port)
+        except Taken:
+            continue
+        served.append(port)
+        return cut
+    writer = CutWriter(terminals, plan.mark, plan.root)
+    cut = writer.cut(port)
+    writers.append((writer, [port]))
+    return cut
 
 
+def _by_voltage(port: Port) -> bool:
+    return port.side == "input" and not port.current_driven
+
+
+def _port_job(port: Port, cut: Cut) -> dict[str, str]:
+    source = cut.voltage if _by_voltage(port) else cut.current
+    return {"subject": port.subject, "source": source, "node": cut.node, "current": cut.voltage}
+
+
+def impedance(port: Port, voltage: Complex, current: Complex) -> Complex | str:
+    """A port's impedance from the voltage on the stage's side and the cut's current into the stage, with a test
+    signal of 1 V or 1 A; or why there is none."""
+    if not np.all(np.isfinite(voltage) & np.isfinite(current)):
+        return "ngspice gave values that are no numbers"
+    if np.any((voltage == 0) & (current == 0)):
+        return "the test signal shows neither a voltage nor a current"
+    if _by_voltage(port):
+        if np.any(current == 0):
+            return "no current flows into the port: its impedance is infinite"
+        return voltage / current
+    # the cut's current counts from the outside into the stage; 1 A - I(outside) is 1 A + that
+    share = 1.0 + current
+    if np.any(np.abs(share) < LEAST_SHARE):
+        return "the outside takes all of the test current: the port's impedance is beyond measure"
+    return voltage / share
+
+
+@dataclass
 class _Found:
     """Collects the worker's answers."""
 
-    def __init__(self, ports: int, progress: Callable[[int, int], None] | None) -> None:
-        self.ports = ports
-        self.progress = progress
-        self.raw: dict[str, tuple[Complex, Complex]] = {}
-        self.refused: dict[str, str] = {}
-        self.operating_point: dict[str, float] = {}
-        self.currents: dict[str, float] = {}
-        self.messages: list[str] = []
-        self.failure = ""
-        self.failed_step = ""
+    plan: Plan
+    total: int
+    progress: Callable[[int, int], None] | None
+    raw: dict[str, dict[str, Complex]] = field(default_factory=dict)
+    refused: dict[str, str] = field(default_factory=dict)
+    volts: dict[str, float] = field(default_factory=dict)
+    amperes: dict[str, float] = field(default_factory=dict)
+    messages: list[str] = field(default_factory=list)
+    failure: str = ""
+    failed_step: str = ""
 
     def take(self, answer: Mapping[str, Any]) -> None:
         """One answer."""
         match answer["event"]:
             case "operating point":
-                self.operating_point = {n: v for n, v in answer["voltages"].items() if not _is_ours(n)}
-                self.currents = {_our_name(n): v for n, v in answer["currents"].items() if not _is_ours(n)}
+                self._operating_point(answer["values"])
             case "port":
-                pair = [np.array(answer[k], dtype=np.float64).reshape(-1, 2) for k in ("voltage", "current")]
-                voltage, current = (a[:, 0] + 1j * a[:, 1] for a in pair)
-                self.raw[answer["subject"]] = (voltage, current)
+                parts = {k: np.array(answer[k], dtype=np.float64) for k in ("frequency", "voltage", "current")}
+                self.raw[answer["subject"]] = {k: pairs[:, 0] + 1j * pairs[:, 1] for k, pairs in parts.items()}
             case "unmeasured":
                 self.refused[answer["subject"]] = answer["reason"]
             case "failed":
@@ -120,131 +197,51 @@ class _Found:
             case "done":
                 self.messages = answer["messages"]
         if self.progress is not None and answer["event"] in ("port", "unmeasured"):
-            self.progress(len(self.raw) + len(self.refused), self.ports)
+            self.progress(len(self.raw) + len(self.refused), self.total)
+
+    def _operating_point(self, values: Mapping[str, float]) -> None:
+        for name, value in values.items():
+            base, hash_, rest = name.partition("#")
+            if name.startswith("@") or self.plan.mark in base.removeprefix(f"{self.plan.root}.").split(".")[-1]:
+                continue
+            if not hash_:
+                self.volts[self._flat(base)] = value
+            elif rest == "branch" and "$" not in base:
+                self.amperes[self._flat(re.sub(r"^[a-z]\.(?=x)", "", base))] = value
+
+    def _flat(self, name: str) -> str:
+        return name.removeprefix(f"{self.plan.root}.") if self.plan.root else name
+
+    def simulation(
+        self, engine: EngineInfo, frequency: Real, sweeps: Sweeps, ports: Mapping[str, Port], left_out: tuple[str, ...]
+    ) -> Simulation:
+        """All that was found."""
+        values: dict[str, Complex] = {}
+        unmeasured = dict(self.plan.refused)
+        if self.failure and self.failed_step == "load" and not engine.code_models and _speaks_of_models(self.failure):
+            self.failure += f" / {CODE_MODELS_MISSING}"
+        for subject in self.plan.cuts:
+            value = self._value(subject, ports[subject], frequency, sweeps)
+            if isinstance(value, str):
+                unmeasured[subject] = value
+            else:
+                values[subject] = value
+        return Simulation(
+            engine, values, unmeasured, self.volts, self.amperes, self.failure, self.failed_step,
+            tuple(self.messages), left_out,
+        )  # fmt: skip
+
+    def _value(self, subject: str, port: Port, frequency: Real, sweeps: Sweeps) -> Complex | str:
+        raw = self.raw.get(subject)
+        if raw is None:
+            return self.refused.get(subject) or self.failure or "ngspice gave no result"
+        if any(len(part) != len(frequency) for part in raw.values()):
+            return "ngspice gave another number of points than were asked for"
+        voltage, current, seen = (raw[k][sweeps.order] for k in ("voltage", "current", "frequency"))
+        if np.any(np.abs(seen - frequency) > SAME_POINT * np.abs(frequency)):
+            return "ngspice gave points at other frequencies than were asked for"
+        return impedance(port, voltage, current)
 
 
-def _is_ours(name: str) -> bool:
-    return re.search(r"(^|\.)[vi]?xc_\d+$", name) is not None
-
-
-def _our_name(name: str) -> str:
-    """ngspice's `v.x1.v3` is `x1.v3` here."""
-    letter, dot, rest = name.partition(".")
-    return rest if dot and len(letter) == 1 else name
-
-
-def _port_job(port: Port, cut: Cut) -> dict[str, str]:
-    series = port.side == "input" and not port.current_driven
-    return {
-        "subject": port.subject,
-        "source": cut.flat("v" if series else "i"),
-        "voltage": cut.stage_node(port),
-        "current": f"{cut.flat('v')}#branch",
-    }
-
-
-def sweeps_of(frequency: Real) -> tuple[list[list[Any]], Any]:
-    """ngspice sweeps that give the frequencies, and the order in which to read their points: one logarithmic run
-    for all that lies on ten points a decade from the first, single points for the rest."""
-    first = float(frequency[0])
-    place = 10.0 * np.log10(frequency / first)
-    on = np.abs(place - np.round(place)) < 1e-7
-    steps = np.round(place[on]).astype(int)
-    regular = len(steps) > 1 and bool(np.all(np.diff(steps) == 1))
-    if not regular:
-        on[:] = False
-    sweeps: list[list[Any]] = []
-    if regular:
-        # ngspice divides the range evenly, so its end decides where every point lies
-        sweeps.append(["dec", 10, first, first * 10.0 ** (float(steps[-1]) / 10.0)])
-    sweeps += [["lin", 1, float(f), float(f)] for f in frequency[~on]]
-    positions = np.concatenate([np.nonzero(on)[0], np.nonzero(~on)[0]])
-    return sweeps, np.argsort(positions)
-
-
-def deck_lines(
-    deck: Deck, circuit: Circuit, partition: Partition, writer: CutWriter
-) -> tuple[list[str], tuple[str, ...]]:
-    """The deck as ngspice gets it: the user's harmless cards with the cuts written in, AC parts silenced."""
-    sorted_cards = harmless(deck.cards)
-    block = _block_of(sorted_cards.cards, circuit) if circuit.boundary else None
-    lines = [TITLE]
-    inner: set[int] = set(map(id, block)) if block else set()
-    for card in sorted_cards.cards:
-        if id(card) not in inner and (
-            block is None or card.kind in (".param", ".func", ".model", ".global", ".options")
-        ):
-            lines += _lines_of(card, writer)
-    if block is not None:
-        lines = [TITLE, *_definitions(sorted_cards.cards, block, writer), *_body(block, writer)]
-    lines += writer.added.get(id(None), [])
-    lines += _ties(circuit, partition)
-    lines.append(".end")
-    return lines, sorted_cards.left_out
-
-
-def _lines_of(card: Card, writer: CutWriter) -> Iterator[str]:
-    if card.kind in (".options", ".option", ".opt"):
-        text = options_text(card)
-    else:
-        silent = ac_part(card)
-        if silent is not None:
-            writer.edits.setdefault(id(card), []).append((*silent, ""))
-        text = writer.text_of(card)
-    if text:
-        yield text
-    if card.kind in (".subckt", ".macro"):
-        yield from writer.added.get(id(card), [])
-
-
-def _block_of(cards: tuple[Card, ...], circuit: Circuit) -> list[Card]:
-    """The cards of the subcircuit whose pins are the circuit's boundary, its `.subckt` and `.ends` included."""
-    depth = 0
-    block: list[Card] = []
-    for card in cards:
-        opens = card.kind in (".subckt", ".macro")
-        if opens and not block and tuple(f.key for f in card.fields[2 : 2 + len(circuit.boundary)]) == circuit.boundary:
-            depth = 1
-            block.append(card)
-        elif block and depth:
-            block.append(card)
-            depth += opens - (card.kind in (".ends", ".eom"))
-    return block
-
-
-def _definitions(cards: tuple[Card, ...], block: list[Card], writer: CutWriter) -> list[str]:
-    """All top-level definitions and settings but the block itself."""
-    own = set(map(id, block))
-    lines: list[str] = []
-    depth = 0
-    for card in cards:
-        if id(card) in own:
-            continue
-        depth += card.kind in (".subckt", ".macro")
-        if depth or card.kind.startswith("."):
-            lines += _lines_of(card, writer)
-        depth -= card.kind in (".ends", ".eom")
-    return lines
-
-
-def _body(block: list[Card], writer: CutWriter) -> list[str]:
-    """The block's cards at top level, its default parameters as parameters."""
-    lines: list[str] = []
-    fields = block[0].fields if block else ()
-    for index, field in enumerate(fields):
-        if field.text == "=" and 0 < index < len(fields) - 1:
-            lines.append(f".param {fields[index - 1].text}={fields[index + 1].text}")
-    for card in block[1:-1]:
-        lines += _lines_of(card, writer)
-    return lines
-
-
-def _ties(circuit: Circuit, partition: Partition) -> list[str]:
-    """Zero-volt sources from supply pins that the deck leaves open to ground: rails do not move at AC, and an open
-    one would leave ngspice without an operating point."""
-    fed = {n for e in circuit.elements if not e.origin.path for n in e.nodes}
-    held = {n for e in circuit.elements if isinstance(e, Source) for n in e.nodes}
-    own = {name for a in partition.amplifiers for name in a.elements}
-    outer = {n for e in circuit.elements if e.name not in own for n in e.nodes} | fed | held
-    open_rails = [n for n, why in partition.stiff.items() if why == "rail" and n not in outer and "." not in n]
-    return [f"vxc_{k + 1000000} {node} 0 dc 0" for k, node in enumerate(open_rails)]
+def _speaks_of_models(words: str) -> bool:
+    return "MIF-ERROR" in words or "unable to find definition of model" in words.lower()

@@ -4,16 +4,23 @@ import json
 import os
 import selectors
 import signal
+import site
 import subprocess
 import sys
 import tempfile
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import suppress
-from typing import Any
+from pathlib import Path
+from typing import IO, Any
 
-KEPT = ("PATH", "LD_LIBRARY_PATH", "NGSPICE_LIBRARY_PATH", "SPICE_LIB_DIR", "SPICE_SCRIPTS", "PYTHONPATH", "LANG")
-"""What the worker sees of the environment; HOME is an empty folder, so that no start-up file is read."""
+PACKAGE_ROOT = Path(__file__).resolve().parents[2]
+WORKER = (sys.executable, "-P", "-W", "ignore", "-m", "xcheck.simulate.worker")
+KEPT = ("LD_LIBRARY_PATH", "DYLD_LIBRARY_PATH")
+KEPT_PATHS = ("SPICE_LIB_DIR", "SPICE_SCRIPTS")
+"""What the worker sees of the environment, besides what is set below."""
+LAST_STEPS = ("done", "engine")
+"""Events after which the worker says no more."""
 
 
 class WorkerEnded(Exception):
@@ -24,21 +31,23 @@ class WorkerEnded(Exception):
         self.step = step
 
 
-def answers_of(job: dict[str, Any], library: str, seconds: float) -> Iterator[dict[str, Any]]:
-    """The worker's answers to a job, one by one. Raises WorkerEnded."""
-    with tempfile.TemporaryDirectory(prefix="xcheck-") as folder:
-        environment = {k: v for k, v in os.environ.items() if k in KEPT}
-        environment.update(HOME=folder, TMPDIR=folder, OPENBLAS_NUM_THREADS="1", OMP_NUM_THREADS="1")
-        environment["NGSPICE_LIBRARY_PATH"] = library
+def answers_of(
+    job: dict[str, Any], library: str, seconds: float, command: Sequence[str] = WORKER
+) -> Iterator[dict[str, Any]]:
+    """The worker's answers to a job, one by one. Raises WorkerEnded.
+
+    It runs in an empty folder that is deleted afterwards, in a process group of its own, which is killed at the end
+    of `seconds` of wall time and whenever the caller stops listening.
+    """
+    with tempfile.TemporaryDirectory(prefix="xcheck-") as folder, tempfile.TemporaryFile() as complaints:
         worker = subprocess.Popen(
-            [sys.executable, "-W", "ignore", "-m", "xcheck.simulate.worker"],
-            cwd=folder, env=environment, stdin=subprocess.PIPE, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL,
-            start_new_session=True,
+            list(command), cwd=folder, env=environment(folder, library), stdin=subprocess.PIPE,
+            stdout=subprocess.PIPE, stderr=complaints, start_new_session=True,
         )  # fmt: skip
         try:
-            yield from _converse(worker, json.dumps(job).encode(), time.monotonic() + seconds, seconds)
+            yield from _Conversation(worker, complaints, seconds).answers(json.dumps(job).encode())
         finally:
-            with suppress(ProcessLookupError):
+            with suppress(ProcessLookupError, PermissionError):
                 os.killpg(worker.pid, signal.SIGKILL)
             worker.wait()
             for pipe in (worker.stdin, worker.stdout):
@@ -47,65 +56,98 @@ def answers_of(job: dict[str, Any], library: str, seconds: float) -> Iterator[di
                         pipe.close()
 
 
-def _converse(
-    worker: "subprocess.Popen[bytes]", message: bytes, deadline: float, seconds: float
-) -> Iterator[dict[str, Any]]:
-    """Writes the job while reading answers, so that neither side can block the other."""
-    assert worker.stdin is not None and worker.stdout is not None  # noqa: S101, PT018  # both are pipes, see above
-    os.set_blocking(worker.stdin.fileno(), False)
-    pending = bytearray()
-    with selectors.DefaultSelector() as watch:
-        watch.register(worker.stdout, selectors.EVENT_READ)
-        watch.register(worker.stdin, selectors.EVENT_WRITE)
-        while True:
-            left = deadline - time.monotonic()
-            if left <= 0:
-                raise WorkerEnded("time limit", f"ngspice was stopped after {seconds:.0f} s")
-            for key, _ in watch.select(left):
-                if key.fileobj is worker.stdin:
-                    message = _write_some(watch, worker, message)
-                    continue
-                data = os.read(worker.stdout.fileno(), 1 << 16)
-                if not data:
-                    raise WorkerEnded("crash", _how_it_ended(worker))
-                pending += data
-                *lines, rest = pending.split(b"\n")
-                pending = bytearray(rest)
-                for line in lines:
-                    answer = json.loads(line)
-                    yield answer
-                    if answer["event"] in ("done", "engine") or (answer["event"] == "failed" and _final(answer)):
-                        return
+def environment(folder: str, library: str) -> dict[str, str]:
+    """A minimal environment: HOME is the empty folder, so that no start-up file is found there; this package and the
+    user's own packages can still be imported; one thread."""
+    found = {key: os.environ[key] for key in KEPT if key in os.environ}
+    found |= {key: os.path.abspath(os.environ[key]) for key in KEPT_PATHS if os.environ.get(key)}
+    given = [os.path.abspath(p) for p in os.environ.get("PYTHONPATH", "").split(os.pathsep) if p]
+    return found | {
+        "HOME": folder, "TMPDIR": folder, "NGSPICE_LIBRARY_PATH": library,
+        "PYTHONPATH": os.pathsep.join([str(PACKAGE_ROOT), *given]), "PYTHONUSERBASE": site.getuserbase(),
+        "PYTHONDONTWRITEBYTECODE": "1", "OPENBLAS_NUM_THREADS": "1", "OMP_NUM_THREADS": "1",
+    }  # fmt: skip
 
 
-def _final(answer: dict[str, Any]) -> bool:
-    """After these the worker says no more."""
-    return answer["step"] in ("crash", "memory limit")
+class _Conversation:
+    """Writes a job and reads the answers at the same time, so that neither side can block the other."""
+
+    def __init__(self, worker: "subprocess.Popen[bytes]", complaints: IO[bytes], seconds: float) -> None:
+        self.worker = worker
+        self.complaints = complaints
+        self.seconds = seconds
+        self.deadline = time.monotonic() + seconds
+        self.unsent = b""
+
+    def answers(self, message: bytes) -> Iterator[dict[str, Any]]:
+        """Answers until the last one. Raises WorkerEnded."""
+        self.unsent = message
+        pending = b""
+        with selectors.DefaultSelector() as watch:
+            for pipe, event in ((self.worker.stdout, selectors.EVENT_READ), (self.worker.stdin, selectors.EVENT_WRITE)):
+                if pipe is not None:
+                    os.set_blocking(pipe.fileno(), False)
+                    watch.register(pipe, event)
+            while True:
+                left = self.deadline - time.monotonic()
+                if left <= 0:
+                    raise WorkerEnded("time limit", f"ngspice was stopped after {self.seconds:g} s")
+                for key, event in watch.select(left):
+                    if event & selectors.EVENT_WRITE:
+                        self._write(watch)
+                        continue
+                    data = os.read(key.fd, 1 << 16)
+                    if not data:
+                        raise self._ended()
+                    *lines, pending = (pending + data).split(b"\n")
+                    for line in lines:
+                        answer = self._read(line)
+                        yield answer
+                        if answer["event"] in LAST_STEPS:
+                            return
+
+    def _read(self, line: bytes) -> dict[str, Any]:
+        try:
+            answer = json.loads(line)
+        except ValueError:
+            answer = None
+        if not isinstance(answer, dict) or "event" not in answer:
+            raise WorkerEnded("crash", f"the answer {line[:60]!r} of the worker makes no sense")
+        return answer
+
+    def _write(self, watch: selectors.BaseSelector) -> None:
+        pipe = self.worker.stdin
+        if pipe is None:
+            return
+        try:
+            sent = os.write(pipe.fileno(), self.unsent[: 1 << 16])
+        except BlockingIOError:
+            return
+        except BrokenPipeError:  # it has ended; what it said is read next
+            sent = len(self.unsent)
+        self.unsent = self.unsent[sent:]
+        if not self.unsent:
+            watch.unregister(pipe)
+            with suppress(BrokenPipeError):
+                pipe.close()
+
+    def _ended(self) -> WorkerEnded:
+        """Why the worker ended early, by its status and the last line that it left."""
+        try:
+            code = self.worker.wait(max(self.deadline - time.monotonic(), 0.1))
+        except subprocess.TimeoutExpired:
+            return WorkerEnded("time limit", f"ngspice was stopped after {self.seconds:g} s")
+        if code == -signal.SIGXCPU:
+            return WorkerEnded("time limit", "ngspice used up its processor time")
+        if code < 0:
+            return WorkerEnded("crash", f"ngspice ended with signal {_signal_name(-code)}")
+        self.complaints.seek(0)
+        left = self.complaints.read()[-2000:].decode("utf-8", "replace").strip().splitlines()
+        return WorkerEnded("crash", f"the worker ended early with status {code}" + (f": {left[-1]}" if left else ""))
 
 
-def _write_some(watch: selectors.BaseSelector, worker: "subprocess.Popen[bytes]", message: bytes) -> bytes:
-    pipe = worker.stdin
-    if pipe is None:
-        return b""
+def _signal_name(number: int) -> str:
     try:
-        sent = os.write(pipe.fileno(), message[: 1 << 16])
-    except BlockingIOError:
-        return message
-    except BrokenPipeError:
-        sent = len(message)
-    message = message[sent:]
-    if not message:
-        watch.unregister(pipe)
-        with suppress(BrokenPipeError):
-            pipe.close()
-    return message
-
-
-def _how_it_ended(worker: "subprocess.Popen[bytes]") -> str:
-    code = worker.wait()
-    if code < 0:
-        name = signal.Signals(-code).name
-        if name == "SIGXCPU":
-            return "ngspice used up its processor time"
-        return f"ngspice ended with signal {name}"
-    return f"the worker ended early with status {code}"
+        return signal.Signals(number).name
+    except ValueError:
+        return str(number)

@@ -1,8 +1,10 @@
-"""The worker: one process that holds ngspice through PySpice, reads jobs and answers in JSON lines.
+"""The worker: one process that holds ngspice, reads one job and answers in JSON lines.
 
-It is started in an empty folder with HOME there, puts limits on itself before ngspice is loaded (no file can be
-written, memory and time are bounded), and keeps its answers on a descriptor of their own, so that nothing that
-ngspice prints can disturb them. Run as `python -m xcheck.simulate.worker`.
+It is started in an empty folder with HOME there, so that no start-up file is found. It bounds itself before the deck
+is looked at: memory and processor time are limited, no file can grow, and once ngspice and its code models are in
+memory no file can be opened any more, so that nothing can be read, written or started even by a deck that gets past
+the list of harmless cards. Answers go to a descriptor of their own, so that nothing that ngspice prints can disturb
+them. Run as `python -m xcheck.simulate.worker`.
 """
 
 import json
@@ -11,12 +13,18 @@ import os
 import resource
 import sys
 import warnings
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Any
+
+import numpy as np
+
+from xcheck.simulate.ngspice import Ngspice, NoCommand
+from xcheck.simulate.words import not_loaded, out_of_memory, quoted, refused, telling
 
 Send = Callable[..., None]
 
-POLY_PROBE = ["poly", "v1 1 0 1", "e1 2 0 poly(1) 1 0 0 1", "r1 2 0 1", ".end"]
+POLY_PROBE = ("poly", "v1 1 0 1", "e1 2 0 poly(1) 1 0 0 1", "r1 2 0 1", ".end")
+MOST_MESSAGES = 50
 
 
 class Refused(Exception):
@@ -27,146 +35,139 @@ class Refused(Exception):
         self.step = step
 
 
-class Engine:
-    """ngspice's shared library, judged by what it says and by whether results are there: PySpice takes every
-    line on standard error that does not begin with `Warning:` for a failure, and newer versions print harmless
-    ones."""
-
-    def __init__(self) -> None:
-        from PySpice.Spice.NgSpice.Shared import NgSpiceShared
-
-        self.spice = NgSpiceShared.new_instance()
-        self.messages: list[str] = []
-
-    def command(self, text: str) -> list[str]:
-        """Runs a command; its lines on standard error, and on standard output where they speak of an error."""
-        from PySpice.Spice.NgSpice.Shared import NgSpiceCommandError
-
-        try:
-            self.spice.exec_command(text)
-        except NgSpiceCommandError:
-            pass  # judged below by what was said, and by the caller by what is there
-        except NameError as error:
-            raise Refused("command", str(error)) from error
-        return self._words()
-
-    def load(self, lines: list[str]) -> None:
-        """Loads a circuit. Raises Refused."""
-        from PySpice.Spice.NgSpice.Shared import NgSpiceCircuitError
-
-        try:
-            self.spice.load_circuit("\n".join(lines))
-        except NgSpiceCircuitError as error:
-            raise Refused("load", " / ".join(self._words()) or "the circuit was refused") from error
-        except NameError as error:
-            raise Refused("load", " / ".join(self._words()) or str(error)) from error
-        words = self._words()
-        self.messages += words
-        if any("no circuit loaded" in w.lower() for w in [*words, *self.command("listing")]):
-            raise Refused("load", " / ".join(words) or "no circuit was loaded")
-
-    def _words(self) -> list[str]:
-        lines = [
-            *self.spice._stderr,
-            *(w for w in self.spice._stdout if "error" in w.lower() or "warning" in w.lower()),
-        ]
-        return [str(line).strip() for line in lines if str(line).strip()]
-
-    def vectors(self, kind: str) -> dict[str, Any]:
-        """The vectors of the newest plot of a kind ('op', 'ac'), {} where there is none."""
-        try:
-            names = [n for n in self.spice.plot_names if n.startswith(kind)]
-        except RuntimeError:  # no plot at all: a null pointer where the list should be
-            return {}
-        if not names:
-            return {}
-        plot = self.spice.plot(None, names[0])
-        return {str(name).lower(): vector._data for name, vector in plot.items()}
-
-
 def limit(job: dict[str, Any]) -> None:
-    """Bounds what this process can do: write no file, use so much memory and processor time."""
-    resource.setrlimit(resource.RLIMIT_FSIZE, (0, 0))
-    resource.setrlimit(resource.RLIMIT_CORE, (0, 0))
+    """Bounds memory (bytes) and processor time (s) of this process, and lets no file grow."""
     memory, seconds = int(job["memory_bytes"]), int(job["cpu_seconds"])
-    for what, soft, hard in ((resource.RLIMIT_AS, memory, memory), (resource.RLIMIT_CPU, seconds, seconds + 5)):
+    bounds = (
+        (resource.RLIMIT_FSIZE, 0, 0),
+        (resource.RLIMIT_CORE, 0, 0),
+        (resource.RLIMIT_AS, memory, memory),
+        (resource.RLIMIT_CPU, seconds, seconds + 5),
+    )
+    for what, soft, hard in bounds:
         # a limit that is there already may only be lowered
         most = resource.getrlimit(what)[1]
-        bounds = [n if most == resource.RLIM_INFINITY else min(n, most) for n in (soft, hard)]
-        resource.setrlimit(what, (bounds[0], bounds[1]))
+        lowered = [n if most == resource.RLIM_INFINITY else min(n, most) for n in (soft, hard)]
+        resource.setrlimit(what, (lowered[0], lowered[1]))
 
 
-def probe(engine: Engine, send: Send) -> None:
+def open_nothing_more() -> None:
+    """From here on no file, pipe or program can be opened; what is open stays open."""
+    resource.setrlimit(resource.RLIMIT_NOFILE, (0, 0))
+
+
+def probe(engine: Ngspice, send: Send) -> None:
     """Says which ngspice this is, and whether its code models run."""
-    try:
-        engine.load(POLY_PROBE)
-        engine.command("op")
-        models = bool(engine.vectors("op"))
-    except Refused:
-        models = False
-    send(event="engine", version=str(engine.spice.ngspice_version or ""), code_models=models)
+    taken, _ = engine.load(list(POLY_PROBE))
+    models = taken and not refused(engine.command("op")) and bool(engine.vectors("op"))
+    send(event="engine", version=engine.version, code_models=models)
 
 
-def operating_point(engine: Engine, send: Send) -> None:
-    """One operating point; trusted only where nothing says that the search was aborted."""
-    words = engine.command("op")
-    engine.messages += words
-    values = engine.vectors("op")
-    failed = [w for w in words if "aborted" in w.lower() or "failed" in w.lower()]
-    if not values or any("aborted" in w.lower() for w in words):
-        raise Refused("operating point", " / ".join(failed or words) or "no operating point was found")
-    real = {name: float(data[0].real) for name, data in values.items() if len(data)}
-    send(
-        event="operating point",
-        voltages={n: v for n, v in real.items() if not n.endswith("#branch") and not n.startswith("@")},
-        currents={n.removesuffix("#branch"): v for n, v in real.items() if n.endswith("#branch")},
-    )
+class Measuring:
+    """One job: loads of one deck, each with the ports that are measured in it. glance: the `ac` command of one
+    point that shows whether all is silent."""
+
+    def __init__(self, engine: Ngspice, sweeps: Sequence[str], glance: str, send: Send) -> None:
+        self.engine = engine
+        self.sweeps = sweeps
+        self.glance = glance
+        self.send = send
+        self.messages: dict[str, None] = {}
+
+    def load(self, lines: list[str], first: bool) -> None:
+        """Loads the deck and finds its operating point, which is told once. Raises Refused."""
+        taken, said = self.engine.load(lines)
+        self.messages |= dict.fromkeys(telling(said))
+        if not taken:
+            raise _refusal("load", said, "ngspice did not take the deck")
+        words = self.engine.command("op")
+        if not_loaded(words):
+            raise _refusal("load", said or words, "ngspice did not take the deck")
+        self.messages |= dict.fromkeys(telling(words))
+        values = self.engine.vectors("op")
+        numbers = {name: float(data[0].real) for name, data in values.items() if len(data)}
+        if refused(words) or not numbers or not all(map(np.isfinite, numbers.values())):
+            raise _refusal("operating point", words, "ngspice found no operating point")
+        if first:
+            self.send(event="operating point", values=numbers)
+
+    def silence(self) -> None:
+        """Makes sure that nothing answers at AC while no test signal is alive. Raises Refused."""
+        self._forget()
+        words = self.engine.command(self.glance)
+        values = self.engine.vectors("ac")
+        if refused(words) or "frequency" not in values:
+            raise _refusal("ac", words, "ngspice gave no result")
+        loud = [name for name, data in values.items() if name != "frequency" and np.any(data != 0)]
+        if loud:
+            raise Refused("ac", f"a signal at AC is alive that is no test signal, seen at {', '.join(loud[:3])}")
+
+    def _forget(self) -> None:
+        """Drops earlier results and wishes of what to save."""
+        self.engine.command("destroy all")
+        self.engine.command("delete all")
+
+    def port(self, port: dict[str, str]) -> None:
+        """Measures one port with its test source alone alive, and tells what was found."""
+        subject = port["subject"]
+        try:
+            points = self._points(port)
+        except (Refused, NoCommand) as why:
+            self.send(event="unmeasured", subject=subject, reason=str(why))
+            return
+        self.send(event="port", subject=subject, **{key: _pairs(values) for key, values in points.items()})
+
+    def _points(self, port: dict[str, str]) -> "dict[str, np.typing.NDArray[np.complex128]]":
+        names = {"frequency": "frequency", "voltage": port["node"], "current": f"{port['current']}#branch"}
+        self._forget()
+        self.engine.command(f"save {names['voltage']} {names['current']}")
+        said = self.engine.command(f"alter {port['source']} acmag = 1")
+        if refused(said):
+            raise _refusal("ac", said, "the test signal could not be set")
+        found: dict[str, list[Any]] = {key: [] for key in names}
+        try:
+            for sweep in self.sweeps:
+                words = self.engine.command(sweep)
+                values = self.engine.vectors("ac")
+                if refused(words) or not all(len(values.get(name, ())) for name in names.values()):
+                    raise _refusal("ac", words, "ngspice gave no result")
+                for key, name in names.items():
+                    found[key].append(values[name])
+                self.engine.command("destroy all")
+        finally:
+            self.engine.command(f"alter {port['source']} acmag = 0")
+        return {key: np.concatenate(parts).astype(np.complex128) for key, parts in found.items()}
 
 
-def measure_port(engine: Engine, port: dict[str, Any], sweeps: list[list[Any]], send: Send) -> None:
-    """One `ac` run a sweep, with this port's test source alone alive."""
-    engine.command("delete all")
-    engine.command("destroy all")
-    engine.command(f"save {port['voltage']} {port['current']}")
-    source = port["source"]
-    engine.command(f"alter {source} acmag = 1")
-    voltage: list[complex] = []
-    current: list[complex] = []
-    words: list[str] = []
-    for kind, points, low, high in sweeps:
-        words = engine.command(f"ac {kind} {points} {low!r} {high!r}")
-        values = engine.vectors("ac")
-        if port["voltage"] not in values or port["current"] not in values:
-            send(event="unmeasured", subject=port["subject"], reason=" / ".join(words) or "ngspice gave no result")
-            break
-        voltage += list(values[port["voltage"]])
-        current += list(values[port["current"]])
-        engine.command("destroy all")
-    else:
-        send(
-            event="port", subject=port["subject"],
-            voltage=[[v.real, v.imag] for v in map(complex, voltage)],
-            current=[[c.real, c.imag] for c in map(complex, current)],
-        )  # fmt: skip
-    engine.command(f"alter {source} acmag = 0")
+def _refusal(step: str, said: Sequence[str], otherwise: str) -> Refused:
+    return Refused("memory limit" if out_of_memory(said) else step, quoted(said, otherwise))
+
+
+def _pairs(values: "np.typing.NDArray[np.complex128]") -> list[list[float]]:
+    return np.stack([values.real, values.imag], axis=1).tolist()  # type: ignore[no-any-return]
 
 
 def run(job: dict[str, Any], send: Send) -> None:
     """Carries out one job: a probe, or a deck with its ports."""
     limit(job)
-    engine = Engine()
+    engine = Ngspice()
+    open_nothing_more()
     if job["task"] == "probe":
         probe(engine, send)
         return
+    measuring = Measuring(engine, job["sweeps"], job["glance"], send)
     try:
-        engine.load(job["deck"])
-        send(event="loaded")
-        operating_point(engine, send)
-        for port in job["ports"]:
-            measure_port(engine, port, job["sweeps"], send)
-    except Refused as refused:
-        send(event="failed", step=refused.step, words=str(refused))
-    send(event="done", messages=list(dict.fromkeys(engine.messages))[:50])
+        for number, load in enumerate(job["loads"]):
+            if number:
+                engine.command("remcirc")
+            measuring.load(load["lines"], first=not number)
+            if load["ports"]:
+                measuring.silence()
+            for port in load["ports"]:
+                measuring.port(port)
+    except Refused as why:
+        send(event="failed", step=why.step, words=str(why))
+    send(event="done", messages=list(measuring.messages)[:MOST_MESSAGES])
 
 
 def main() -> None:
@@ -179,16 +180,17 @@ def main() -> None:
     warnings.simplefilter("ignore")
 
     def send(**event: Any) -> None:
-        answers.write(json.dumps(event, allow_nan=True) + "\n")
+        answers.write(json.dumps(event) + "\n")
         answers.flush()
 
     try:
         run(json.load(sys.stdin), send)
     except MemoryError:
-        send(event="failed", step="memory limit", words="the memory limit was reached")
+        send(event="failed", step="memory limit", words="ngspice needs more memory than it may have")
+        send(event="done", messages=[])
     except Exception as error:  # noqa: BLE001  # the one door out: whatever went wrong is told, never lost
         send(event="failed", step="crash", words=f"{type(error).__name__}: {error}")
-    answers.close()
+        send(event="done", messages=[])
     # ngspice's own exit handlers are of no use to a process that has answered
     os._exit(0)
 
