@@ -55,11 +55,11 @@ class Step:
 
 @dataclass(frozen=True, slots=True)
 class Cut:
-    """A port's cut as ngspice knows it: flat names of the node on the stage's side and of the two test sources."""
+    """A port's cut: flat names of the node on the stage's side and of the zero-volt source. The test current source
+    is named alike."""
 
     node: str
-    voltage: str
-    current: str
+    source: str
 
 
 @dataclass
@@ -184,8 +184,7 @@ class CutWriter:
         need.edits |= edits
         need.lines[name] = _sources(name, word)
         self.needs[path] = need
-        around = self._around(path)
-        return Cut(".".join((*around, name)), _device("v", around, name), _device("i", around, name))
+        return Cut(self._flat(path, name), self._flat(path, f"v{name}"))
 
     def _spread(self, moved: Sequence[Step], path: InstancePath, word: str) -> Cut:
         """A cut whose new node is global, because the stage's terminals are in several scopes."""
@@ -201,12 +200,10 @@ class CutWriter:
             need.alone = True
         self.needs[path].lines[name] = _sources(name, word)
         self.globals.append(name)
-        around = self._around(path)
-        return Cut(name, _device("v", around, name), _device("i", around, name))
+        return Cut(name, self._flat(path, f"v{name}"))
 
-    def _around(self, path: InstancePath) -> tuple[str, ...]:
-        """What ngspice puts before the names of a scope."""
-        return tuple(name for name in (self.root, *path[-1:]) if name)
+    def _flat(self, path: InstancePath, name: str) -> str:
+        return ".".join(part for part in (self.root, *path[-1:], name) if part)
 
     def _next(self) -> str:
         self._count += 1
@@ -258,9 +255,3 @@ def _edits(steps: Iterable[Step], new: str) -> dict[Edit, str]:
 def _sources(name: str, hub: str) -> tuple[str, ...]:
     """The cut: current through the voltage source counts from the hub into the stage."""
     return f"v{name} {hub} {name} dc 0 ac 0", f"i{name} 0 {name} dc 0 ac 0"
-
-
-def _device(letter: str, around: tuple[str, ...], name: str) -> str:
-    """ngspice's name for a source inside an instance: `v.x1.vname`."""
-    own = letter + name
-    return ".".join((letter, *around, own)) if around else own

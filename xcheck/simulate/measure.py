@@ -1,7 +1,6 @@
 """Measuring every port of a deck with ngspice."""
 
 import math
-import re
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
@@ -13,6 +12,7 @@ from xcheck.circuit.elements import Circuit
 from xcheck.deck.cards import Card, Deck
 from xcheck.simulate.cuts import Cut, CutWriter, NoCut, Taken, Terminals
 from xcheck.simulate.engine import find_engine
+from xcheck.simulate.names import circuit_name
 from xcheck.simulate.process import WORKER, WorkerEnded, answers_of
 from xcheck.simulate.sanitize import Harmless, harmless
 from xcheck.simulate.size import MOST_ELEMENTS, expanded_size
@@ -27,9 +27,11 @@ MEMORY_LIMIT = 2_000_000_000
 """Bytes of address space of the worker, ngspice's code and Python included."""
 SAME_POINT = 1e-9
 """Relative distance of ngspice's frequency from the one asked for."""
-LEAST_SHARE = 1e-9
-"""The least part of the test current that may be left to a port. It is 1 A less what flows into the outside, known to
-about 1e-16 A, so the figures of a smaller part would be rounding errors."""
+LEAST_SHARE = 1e-10
+"""The least part of the test signal that may be left to a port: what of 1 V drops across it, what of 1 A flows into
+it. It is known to about 1e-16 of the whole, so that of a smaller part less than six figures would be right."""
+LEAST_CURRENT = 1e-18
+"""Ampere, with 1 V in series: less is no current but rounding."""
 CODE_MODELS_MISSING = "ngspice's code models are missing; on Debian and Ubuntu the package `ngspice` brings them"
 
 
@@ -145,8 +147,7 @@ def _by_voltage(port: Port) -> bool:
 
 
 def _port_job(port: Port, cut: Cut) -> dict[str, str]:
-    source = cut.voltage if _by_voltage(port) else cut.current
-    return {"subject": port.subject, "source": source, "node": cut.node, "current": cut.voltage}
+    return {"subject": port.subject, "node": cut.node, "source": cut.source, "test": "v" if _by_voltage(port) else "i"}
 
 
 def impedance(port: Port, voltage: Complex, current: Complex) -> Complex | str:
@@ -154,11 +155,11 @@ def impedance(port: Port, voltage: Complex, current: Complex) -> Complex | str:
     signal of 1 V or 1 A; or why there is none."""
     if not np.all(np.isfinite(voltage) & np.isfinite(current)):
         return "ngspice gave values that are no numbers"
-    if np.any((voltage == 0) & (current == 0)):
-        return "the test signal shows neither a voltage nor a current"
     if _by_voltage(port):
-        if np.any(current == 0):
-            return "no current flows into the port: its impedance is infinite"
+        if np.any(np.abs(current) < LEAST_CURRENT):
+            return "no current flows into the port: its impedance is infinite, or nothing drives it"
+        if np.any((voltage != 0) & (np.abs(voltage) < LEAST_SHARE)):
+            return "the outside takes all of the test voltage: the port's impedance is beyond measure"
         return voltage / current
     # the cut's current counts from the outside into the stage; 1 A - I(outside) is 1 A + that
     share = 1.0 + current
@@ -207,10 +208,10 @@ class _Found:
             if not hash_:
                 self.volts[self._flat(base)] = value
             elif rest == "branch" and "$" not in base:
-                self.amperes[self._flat(re.sub(r"^[a-z]\.(?=x)", "", base))] = value
+                self.amperes[self._flat(circuit_name(base))] = value
 
     def _flat(self, name: str) -> str:
-        return name.removeprefix(f"{self.plan.root}.") if self.plan.root else name
+        return name.removeprefix(f"{self.plan.root}.")
 
     def simulation(
         self, engine: EngineInfo, frequency: Real, sweeps: Sweeps, ports: Mapping[str, Port], left_out: tuple[str, ...]

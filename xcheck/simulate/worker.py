@@ -18,6 +18,7 @@ from typing import Any
 
 import numpy as np
 
+from xcheck.simulate.names import circuit_name, of_another_kind
 from xcheck.simulate.ngspice import Ngspice, NoCommand
 from xcheck.simulate.words import not_loaded, out_of_memory, quoted, refused, telling
 
@@ -73,6 +74,7 @@ class Measuring:
         self.glance = glance
         self.send = send
         self.messages: dict[str, None] = {}
+        self.sources: dict[str, str] = {}
 
     def load(self, lines: list[str], first: bool) -> None:
         """Loads the deck and finds its operating point, which is told once. Raises Refused."""
@@ -88,6 +90,8 @@ class Measuring:
         numbers = {name: float(data[0].real) for name, data in values.items() if len(data)}
         if refused(words) or not numbers or not all(map(np.isfinite, numbers.values())):
             raise _refusal("operating point", words, "ngspice found no operating point")
+        branches = [name.removesuffix("#branch") for name in numbers if name.endswith("#branch")]
+        self.sources = {circuit_name(device): device for device in branches}
         if first:
             self.send(event="operating point", values=numbers)
 
@@ -118,10 +122,14 @@ class Measuring:
         self.send(event="port", subject=subject, **{key: _pairs(values) for key, values in points.items()})
 
     def _points(self, port: dict[str, str]) -> "dict[str, np.typing.NDArray[np.complex128]]":
-        names = {"frequency": "frequency", "voltage": port["node"], "current": f"{port['current']}#branch"}
+        cut = self.sources.get(port["source"])
+        if cut is None:
+            raise Refused("ac", "ngspice does not know the cut")
+        test = of_another_kind(cut, port["test"])
+        names = {"frequency": "frequency", "voltage": port["node"], "current": f"{cut}#branch"}
         self._forget()
         self.engine.command(f"save {names['voltage']} {names['current']}")
-        said = self.engine.command(f"alter {port['source']} acmag = 1")
+        said = self.engine.command(f"alter {test} acmag = 1")
         if refused(said):
             raise _refusal("ac", said, "the test signal could not be set")
         found: dict[str, list[Any]] = {key: [] for key in names}
@@ -135,7 +143,7 @@ class Measuring:
                     found[key].append(values[name])
                 self.engine.command("destroy all")
         finally:
-            self.engine.command(f"alter {port['source']} acmag = 0")
+            self.engine.command(f"alter {test} acmag = 0")
         return {key: np.concatenate(parts).astype(np.complex128) for key, parts in found.items()}
 
 
