@@ -7,187 +7,214 @@ import numpy as np
 
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance
 from xcheck.finding import Finding
-from xcheck.stages.chains import Chain, Wiring, chain_from
+from xcheck.stages.bare import bare_amplifiers
 from xcheck.stages.directives import PinDirective, pin_directives
-from xcheck.stages.macromodel import SignalPins, signal_pins
+from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins, signal_pins
 from xcheck.stages.model import LinearModel, bench, open_loop
 from xcheck.stages.nodes import held_still
-from xcheck.stages.pins import Role, roles_by_comment, roles_by_name, supplies
-from xcheck.stages.types import Amplifier, OpenLoop, Quantity
+from xcheck.stages.pins import (
+    OTHERS,
+    POWER,
+    SIGNAL,
+    Role,
+    roles_by_comment,
+    roles_by_name,
+    speak_of_an_amplifier,
+    supplies,
+)
+from xcheck.stages.supplies import SupplyLevels
+from xcheck.stages.types import Amplifier, OpenLoop
+from xcheck.stages.weighing import Evidence, weigh
+
+LEAST_NAMED_GAIN = 10.0
+"""What is enough where pin names or a comment tell an op-amp and the deck closes a loop around it: a part that the
+designer made poor on purpose."""
 
 
 def find_amplifiers(circuit: Circuit) -> tuple[tuple[Amplifier, ...], tuple[Finding, ...]]:
     """All amplifiers in deck order, and what is wrong with directives that name them."""
     directives, findings = pin_directives(circuit)
-    return _Search(circuit, directives).run(), findings
+    search = _Search(circuit, directives)
+    amplifiers = search.run()
+    return amplifiers, (*findings, *search.findings)
 
 
 class _Search:
+    """Looks at instances from the innermost outwards: an instance takes the place of the one amplifier inside it where
+    it is itself an op-amp."""
+
     def __init__(self, circuit: Circuit, directives: Mapping[str, PinDirective]) -> None:
         self.circuit = circuit
         self.directives = directives
-        self.judged: dict[int, list[SignalPins]] = {}
-        self.loops: dict[tuple[int, str, str, str], OpenLoop] = {}
+        self.findings: list[Finding] = []
+        self.held = held_still(circuit, _follows)
+        self.levels = SupplyLevels(circuit)
+        self.judged: dict[tuple[int, float], list[SignalPins]] = {}
+        self.loops: dict[tuple[int, Mapping[Role, str] | tuple[str, ...]], OpenLoop] = {}
+        self.devices: dict[int, tuple[Device, ...]] = {}
         self.members: dict[str, list[Element]] = {}
         for element in circuit.elements:
             for name in element.origin.path:
                 self.members.setdefault(name, []).append(element)
 
     def run(self) -> tuple[Amplifier, ...]:
-        found: list[Amplifier] = []
-        claimed: set[str] = set()
-        inside: set[str] = set()
-        for instance in self.circuit.instances:
-            if inside & set(instance.origin.path):
-                continue
-            amplifier = self._by_instance(instance)
-            if amplifier is not None:
-                found.append(amplifier)
-                inside.add(instance.name)
-                claimed.update(amplifier.elements)
-        found += self._bare(claimed)
+        below: dict[str, list[Amplifier]] = {}
+        for instance in reversed(self.circuit.instances):
+            inner = below.pop(instance.name, [])
+            found = self._by_instance(instance, inner)
+            parent = instance.origin.path[-1] if instance.origin.path else ""
+            below.setdefault(parent, []).extend(inner if found is None else [found])
+        amplifiers = below.get("", [])
+        claimed = {name for a in amplifiers for name in a.elements}
+        amplifiers += bare_amplifiers(self.circuit, claimed, self.held, self.directives)
         order = {element.name: k for k, element in enumerate(self.circuit.elements)}
-        return tuple(sorted(found, key=lambda a: min(order[name] for name in a.elements)))
+        return tuple(sorted(amplifiers, key=lambda a: min(order[name] for name in a.elements)))
 
-    def _by_instance(self, instance: Instance) -> Amplifier | None:
-        pins = [pin for pin, _ in instance.pins]
+    def _by_instance(self, instance: Instance, inner: Sequence[Amplifier]) -> Amplifier | None:
+        """The amplifier that an instance is, None where it is none. inner: the amplifiers found inside it."""
         told = self.directives.get(instance.name)
-        devices = [e for e in instance.local if isinstance(e, Device)]
-        sources = [e for e in instance.local if isinstance(e, (Controlled, Device))]
-        if not sources:
+        if told is None and (len(inner) > 1 or any(a.name in self.directives for a in inner)):
             return None
-        seen: list[SignalPins] = []
-        if not devices:
-            seen = self._judge(instance, pins)
-            if told is None and len(seen) != 1:
-                return None
-        elif told is None and not _looks_like_an_amplifier(devices, sources):
+        if not any(isinstance(e, (Controlled, Device)) for e in instance.local):
             return None
-        named = roles_by_comment(pins, instance.comments) or roles_by_name(pins)
-        roles, evidence = _weigh(seen, named, told, instance)
-        if roles is None:
+        evidence = self._evidence(instance, told, inner)
+        if evidence is None:
             return None
-        return self._amplifier(instance, roles, evidence, seen, devices)
+        if evidence.fault and told is not None:
+            self.findings.append(Finding("syntax", "error", told.place, evidence.fault, instance.name))
+        return self._amplifier(instance, evidence)
 
-    def _judge(self, instance: Instance, pins: Sequence[str]) -> list[SignalPins]:
+    def _evidence(self, instance: Instance, told: PinDirective | None, inner: Sequence[Amplifier]) -> Evidence | None:
+        pins = [pin for pin, _ in instance.pins]
+        by_comment = roles_by_comment(pins, instance.comments)
+        named = by_comment or (roles_by_name(pins) if speak_of_an_amplifier(pins) else {})
+        source = "comment" if by_comment else "pin names"
+        seen = self._seen(instance, named)
+        if told is None and seen is None:
+            devices = self._devices(instance)
+            if not named or not devices or not _looks_like_an_amplifier(devices, instance.local):
+                return None
+            if inner and not _is_wrapper(instance, inner[0], self.members):
+                return None
+        if told is None and seen is not None and inner and GROUND in (seen.plus, seen.minus):
+            one = inner[0]
+            if GROUND not in (one.non_inverting, one.inverting):
+                return None
+        return weigh(instance, seen, named, source, told)
+
+    def _seen(self, instance: Instance, named: Mapping[Role, str]) -> SignalPins | None:
+        """What the instance's linear elements do at its pins, None where that is no op-amp's."""
+        found = self._fitting(instance, named, self._judge(instance, LEAST_GAIN))
+        if found is None and set(SIGNAL) <= named.keys() and self._is_fed_back(instance, named):
+            found = self._fitting(instance, named, self._judge(instance, LEAST_NAMED_GAIN))
+        return found
+
+    def _fitting(
+        self, instance: Instance, named: Mapping[Role, str], judged: Sequence[SignalPins]
+    ) -> SignalPins | None:
+        nodes = dict(instance.pins)
+        power = {named[role] for role in POWER if role in named}
+        outputs = [s for s in judged if s.output not in power and nodes[s.output] not in self.held.reasons]
+        if len(outputs) > 1:
+            outputs = [s for s in outputs if s.output == named.get("out")]
+        if len(outputs) != 1:
+            return None
+        seen = outputs[0]
+        return seen if all(self._is_supply(instance, pin, named) for pin in seen.tied) else None
+
+    def _is_supply(self, instance: Instance, pin: str, named: Mapping[Role, str]) -> bool:
+        """Whether a pin that conducts to an input may do so: a supply, by its name, its comment or its node."""
+        by_name = roles_by_name([pin]).keys() | {role for role, p in named.items() if p == pin}
+        node = dict(instance.pins)[pin]
+        return bool(set(POWER) & by_name) or node in self.held.quiet or OTHERS.fullmatch(pin) is not None
+
+    def _devices(self, instance: Instance) -> tuple[Device, ...]:
         key = id(instance.local)
+        if key not in self.devices:
+            self.devices[key] = tuple(e for e in instance.local if isinstance(e, Device))
+        return self.devices[key]
+
+    def _judge(self, instance: Instance, least: float) -> list[SignalPins]:
+        """What an instance's linear elements are, the others left out; once for all alike."""
+        key = (id(instance.local), least)
         if key not in self.judged:
-            try:
-                self.judged[key] = signal_pins(instance.local, pins)
-            except np.linalg.LinAlgError:
-                self.judged[key] = []
+            linear = [e for e in instance.local if not isinstance(e, Device)]
+            self.judged[key] = signal_pins(linear, [pin for pin, _ in instance.pins], least)
         return self.judged[key]
 
-    def _amplifier(
-        self, instance: Instance, roles: Mapping[Role, str], evidence: tuple[str, ...],
-        seen: Sequence[SignalPins], devices: Sequence[Device],
-    ) -> Amplifier:  # fmt: skip
+    def _is_fed_back(self, instance: Instance, named: Mapping[Role, str]) -> bool:
         nodes = dict(instance.pins)
-        nodes[GROUND] = GROUND
-        signal = [roles["in+"], roles["in-"], roles["out"]]
-        told = self.directives.get(instance.name)
-        power = {**supplies([p for p, _ in instance.pins], instance.comments, signal), **(told.roles if told else {})}
+        return self.levels.tied(nodes[named["out"]], nodes[named["in-"]])
+
+    def _amplifier(self, instance: Instance, evidence: Evidence) -> Amplifier:
+        roles = evidence.roles
+        nodes = {**dict(instance.pins), GROUND: GROUND}
+        signal = [roles[role] for role in SIGNAL]
+        pins = [pin for pin, _ in instance.pins]
+        power = {**supplies(pins, instance.comments, signal), **{r: p for r, p in roles.items() if r in POWER}}
+        unnamed = [p for p in pins if p not in (*signal, *power.values()) and roles_by_name([p]) == {}]
+        power = {**self.levels.by_level(unnamed, nodes, power), **power}
         members = self.members[instance.name]
+        devices = self._devices(instance)
         if devices:
             reason = f"no linear model is known for `{devices[0].name}` in `{instance.subckt}` ({devices[0].reason})"
             loop = OpenLoop({}, None, exact=False, reason=reason)
-            first = next((e for e in members if isinstance(e, (Controlled, Device))), members[0])
-            gain_element = first.name
         else:
-            loop = self._open_loop(instance, roles)
-            gain_element = f"{instance.name}.{seen[0].gain_element}" if seen else _first_source(members)
+            loop = self._open_loop(instance, signal)
+        first = next((e for e in members if isinstance(e, Controlled)), None) or next(
+            (e for e in members if isinstance(e, Device)), members[0]
+        )
         return Amplifier(
             name=instance.name, subckt=instance.subckt, non_inverting=nodes[roles["in+"]],
             inverting=nodes[roles["in-"]], output=nodes[roles["out"]],
             positive_supply=nodes.get(power.get("v+", "")), negative_supply=nodes.get(power.get("v-", "")),
-            evidence=evidence, elements=tuple(e.name for e in members), gain_element=gain_element,
+            evidence=evidence.words, elements=tuple(e.name for e in members),
+            gain_element=f"{instance.name}.{evidence.gain_element}" if evidence.gain_element else first.name,
             open_loop=loop, place=instance.origin.card.place(),
         )  # fmt: skip
 
-    def _open_loop(self, instance: Instance, roles: Mapping[Role, str]) -> OpenLoop:
-        key = (id(instance.local), roles["in+"], roles["in-"], roles["out"])
+    def _open_loop(self, instance: Instance, signal: Sequence[str]) -> OpenLoop:
+        key = (id(instance.local), tuple(signal))
+        pins = [p for p, _ in instance.pins]
         if key not in self.loops:
-            held = [p for p, _ in instance.pins if p != roles["out"]]
-            model = LinearModel(bench(instance.local, held), roles["in+"], roles["in-"], roles["out"])
+            plus, minus, output = signal
+            model = LinearModel(bench(instance.local, [p for p in pins if p != output]), plus, minus, output)
             try:
                 self.loops[key] = open_loop(model)
             except np.linalg.LinAlgError:
                 reason = f"the equations of `{instance.subckt}` alone have no solution"
                 self.loops[key] = OpenLoop({}, None, exact=False, reason=reason)
-        return self.loops[key]
-
-    def _bare(self, claimed: set[str]) -> list[Amplifier]:
-        elements = [e for e in self.circuit.elements if e.name not in claimed]
-        wiring = Wiring.of(elements)
-        still = held_still(self.circuit)
-        taken: set[str] = set()
-        found: list[Amplifier] = []
-        for element in elements:
-            if isinstance(element, Controlled) and element.kind in "eg" and element.name not in taken:
-                chain = chain_from(element, wiring, still)
-                if chain is not None and not taken & {e.name for e in chain.elements}:
-                    taken.update(e.name for e in chain.elements)
-                    found.append(_bare_amplifier(element, chain, still))
-        return found
+        loop = self.loops[key]
+        nodes = dict(instance.pins)
+        soft = [p for p in pins if p not in signal and nodes[p] not in self.held.still]
+        if soft and loop.exact:
+            tied, moving = other_pins(instance.local, pins, signal[:2], signal[2])
+            moved = [p for p in soft if p in tied or p in moving]
+            if moved:
+                node = nodes[moved[0]]
+                reason = f"its pin `{moved[0]}` has a part in its signal, and node `{node}` is not at AC ground"
+                return replace(loop, exact=False, reason=reason)
+        return loop
 
 
-def _bare_amplifier(first: Controlled, chain: Chain, still: Mapping[str, str]) -> Amplifier:
-    on_bench = tuple(_grounded(e, still) for e in chain.elements)
-    held = [n for n in (chain.plus, chain.minus) if n != GROUND]
-    model = LinearModel(bench(on_bench, held), chain.plus, chain.minus, chain.output)
-    try:
-        loop = open_loop(model)
-    except np.linalg.LinAlgError:
-        loop = OpenLoop({"gain": Quantity(chain.gain, "deck")}, None, exact=False, reason="its equations are singular")
-    return Amplifier(
-        name=first.name, subckt="", non_inverting=chain.plus, inverting=chain.minus, output=chain.output,
-        positive_supply=None, negative_supply=None,
-        evidence=(
-            f"structure: gain {chain.gain:.4g} from ({chain.plus}, {chain.minus}) to `{chain.output}` through "
-            + ", ".join(e.name for e in chain.elements),
-        ),
-        elements=tuple(e.name for e in chain.elements), gain_element=first.name, open_loop=loop,
-        place=first.origin.card.place(),
-    )  # fmt: skip
+def _follows(source: Controlled) -> bool:
+    """Whether a controlled voltage is no amplifier, so that it is still where what it senses is."""
+    return sum(abs(t.gain) for t in source.terms) <= LEAST_NAMED_GAIN
 
 
-def _grounded(element: Element, still: Mapping[str, str]) -> Element:
-    """The element with nodes at AC ground replaced by ground."""
-    nodes = tuple(GROUND if n in still else n for n in element.nodes)
-    return replace(element, nodes=nodes)  # type: ignore[arg-type]  # as many nodes as before
-
-
-def _looks_like_an_amplifier(devices: Sequence[Device], sources: Sequence[Element]) -> bool:
+def _looks_like_an_amplifier(devices: Sequence[Device], elements: Sequence[Element]) -> bool:
     """Whether a nonlinear subcircuit has what an op-amp model needs: active parts beyond diodes."""
-    active = any(d.kind in "qmj" or d.reason == "expression" for d in devices)
-    return active or any(isinstance(s, Controlled) for s in sources)
+    active = any(d.kind in "qmjz" or d.sensing for d in devices)
+    return active or any(isinstance(e, Controlled) for e in elements)
 
 
-def _first_source(members: Sequence[Element]) -> str:
-    return next(e.name for e in members if isinstance(e, Controlled))
-
-
-def _weigh(
-    seen: Sequence[SignalPins], named: Mapping[Role, str], told: PinDirective | None, instance: Instance
-) -> tuple[Mapping[Role, str] | None, tuple[str, ...]]:
-    """The signal pins that the evidence speaks for, and the evidence in words. A directive is the designer's own
-    word; structure is what the elements do; names and comments are what an author wrote."""
-    evidence: list[str] = []
-    roles: dict[Role, str] | None = None
-    if told is not None:
-        roles = dict(told.roles)
-        evidence.append(f"directive at {told.place}")
-    if len(seen) == 1:
-        pins = seen[0]
-        by_structure: dict[Role, str] = {"in+": pins.plus, "in-": pins.minus, "out": pins.output}
-        roles = roles or by_structure
-        evidence.append(f"structure: gain {pins.gain:.4g} from ({pins.plus}, {pins.minus}) to `{pins.output}`")
-    if {"in+", "in-", "out"} <= named.keys():
-        source = "comment" if roles_by_comment([p for p, _ in instance.pins], instance.comments) else "pin names"
-        written = f"{source}: in+ `{named['in+']}`, in- `{named['in-']}`, out `{named['out']}`"
-        if roles is None:
-            roles = {role: named[role] for role in ("in+", "in-", "out")}
-        elif any(roles[role] != named[role] for role in ("in+", "in-", "out")):
-            written += " (contradicts the above, which counts)"
-        evidence.append(written)
-    return roles, tuple(evidence)
+def _is_wrapper(instance: Instance, inner: Amplifier, members: Mapping[str, Sequence[Element]]) -> bool:
+    """Whether an instance only hands the pins of the amplifier inside it on: its signal nodes are pins of the
+    instance, apart from one another, and nothing else in the instance touches both the output and an input."""
+    pins = {node for _, node in instance.pins}
+    signal = {inner.non_inverting, inner.inverting, inner.output}
+    if len(signal) < 3 or not signal <= pins:
+        return False
+    own = set(inner.elements)
+    around = [e for e in members[instance.name] if e.name not in own]
+    return not any(signal & set(e.nodes) for e in around)

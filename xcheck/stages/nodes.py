@@ -1,105 +1,135 @@
-"""Nodes that split a circuit: ground, nodes held by voltage sources, amplifiers' outputs, rails, references."""
+"""Nodes that split a circuit: ground, nodes held by sources, amplifiers' outputs, supply rails."""
 
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, field
 
-from xcheck.circuit.elements import GROUND, Circuit, Controlled, Element, Passive, Source
+from xcheck.circuit.elements import GROUND, Circuit, Controlled, Element, Source
 from xcheck.stages.types import Amplifier
 
 
-def sources_by_node(circuit: Circuit) -> dict[str, list[Source]]:
-    """Voltage sources by node."""
-    by_node: dict[str, list[Source]] = {}
-    for element in circuit.elements:
-        if isinstance(element, Source) and element.kind == "v":
-            for node in element.nodes:
-                by_node.setdefault(node, []).append(element)
-    return by_node
+def is_signal(source: Source) -> bool:
+    """Whether a source has an AC or transient part; `AC 0` says that a signal belongs there, if not now."""
+    return source.ac is not None or bool(source.transient)
 
 
-def reach_by_sources(by_node: Mapping[str, Sequence[Source]], start: Iterable[str]) -> dict[str, tuple[Source, ...]]:
-    """Nodes that voltage sources tie to the start nodes, each with the sources on the way."""
-    reached: dict[str, tuple[Source, ...]] = dict.fromkeys(start, ())
-    waiting = list(reached)
-    while waiting:
-        node = waiting.pop()
-        for source in by_node.get(node, ()):
-            other = source.nodes[0] if source.nodes[1] == node else source.nodes[1]
-            if other not in reached:
-                reached[other] = (*reached[node], source)
-                waiting.append(other)
-    return reached
+@dataclass
+class Held:
+    """Nodes that voltages hold, spread from ground and from outputs through voltage sources and controlled voltages.
+
+    reasons: why each node is held; driver: the flat name of the amplifier or source that holds it; still: nodes that
+    do not move at AC, all but the test source being dead; signal: nodes that carry the AC or transient part of a
+    source.
+    """
+
+    reasons: dict[str, str] = field(default_factory=dict)
+    driver: dict[str, str] = field(default_factory=dict)
+    still: dict[str, str] = field(default_factory=dict)
+    signal: set[str] = field(default_factory=set)
+
+    @property
+    def quiet(self) -> set[str]:
+        """Nodes that neither move nor carry a signal."""
+        return self.still.keys() - self.signal
 
 
-def held_still(circuit: Circuit) -> dict[str, str]:
-    """Nodes that do not move at AC, each with the reason: ground and what voltage sources tie to it. A source's
-    own AC part does not count: all but the test source are dead."""
-    reached = reach_by_sources(sources_by_node(circuit), [GROUND])
-    return {n: f"voltage source {path[-1].name}" if path else "ground" for n, path in reached.items()}
+class _Spread:
+    """Spreads what is held from node to node, each source looked at a constant number of times."""
+
+    def __init__(self, elements: Iterable[Element], follow: Callable[[Controlled], bool]) -> None:
+        self.held = Held()
+        self.touching: dict[str, list[Source | Controlled]] = {}
+        for element in elements:
+            if isinstance(element, Source) and element.kind == "v":
+                for node in element.nodes:
+                    self.touching.setdefault(node, []).append(element)
+            elif isinstance(element, Controlled) and element.kind in "eh" and follow(element):
+                for node in dict.fromkeys((*element.nodes, *element.sensing)):
+                    self.touching.setdefault(node, []).append(element)
+
+    def start(self, node: str, reason: str, driver: str = "", *, still: bool = False) -> list[str]:
+        """Holds a node, and all that voltage sources tie to it; gives the nodes that were not held before."""
+        held = self.held
+        if node in held.reasons:
+            return []
+        held.reasons[node] = reason
+        if driver:
+            held.driver[node] = driver
+        if still:
+            held.still[node] = reason
+        fresh = [node]
+        for one in fresh:
+            for source in self.touching.get(one, ()):
+                other = self._passes_on(source)
+                if other is not None:
+                    fresh.append(other)
+        return fresh
+
+    def _passes_on(self, source: Source | Controlled) -> str | None:
+        """The node that a source holds now, written down with what is known of it; None for none."""
+        held = self.held
+        free = [n for n in source.nodes if n not in held.reasons]
+        if len(free) != 1 or source.nodes[0] == source.nodes[1]:
+            return None
+        base = source.nodes[1] if free[0] == source.nodes[0] else source.nodes[0]
+        if base not in held.reasons:
+            return None
+        fed_by = [base]
+        if isinstance(source, Controlled):
+            if any(t.source for t in source.terms) or not all(n in held.still for n in source.sensing):
+                return None
+            fed_by += source.sensing
+        still = all(n in held.still for n in fed_by)
+        reason = f"{'voltage' if isinstance(source, Source) else 'controlled'} source {source.name}"
+        driver = source.name
+        if not still:  # an output shifted by a voltage source
+            reason, driver = held.reasons[base], held.driver.get(base, "")
+        held.reasons[free[0]] = reason
+        if driver:
+            held.driver[free[0]] = driver
+        if still:
+            held.still[free[0]] = reason
+        if any(n in held.signal for n in fed_by) or (isinstance(source, Source) and is_signal(source)):
+            held.signal.add(free[0])
+        return free[0]
 
 
-@dataclass(frozen=True)
-class StiffNodes:
-    """reasons: why each node is stiff; driver: the flat name of the amplifier or source that holds it;
-    signal: nodes held by a source with an AC or transient part; still: nodes that do not move at AC."""
-
-    reasons: dict[str, str]
-    driver: dict[str, str]
-    signal: frozenset[str]
-    still: dict[str, str]
+def held_still(circuit: Circuit, follow: Callable[[Controlled], bool]) -> Held:
+    """Nodes that do not move at AC: ground, and what sources tie to it. A source's own AC part does not count: all
+    but the test source are dead. follow: controlled voltages that may pass stillness on."""
+    spread = _Spread(circuit.elements, follow)
+    spread.start(GROUND, "ground", still=True)
+    return spread.held
 
 
-def stiff_nodes(circuit: Circuit, amplifiers: Sequence[Amplifier], loose: Sequence[Controlled]) -> StiffNodes:
-    """All stiff nodes but references. loose: controlled sources that belong to no amplifier."""
-    still = held_still(circuit)
-    reasons = dict(still)
-    driver: dict[str, str] = {}
-    signal: set[str] = set()
-    by_node = sources_by_node(circuit)
-    for node, path in reach_by_sources(by_node, [GROUND]).items():
-        if path:
-            driver[node] = path[-1].name
-        if any(s.ac is not None or s.transient for s in path):
-            signal.add(node)
-    outputs = {a.output: a.name for a in amplifiers}
-    for element in loose:
-        if element.kind in "eh":
-            outputs.update({n: element.name for n in element.nodes if n not in still})
-    for node, name in outputs.items():
-        for other in reach_by_sources(by_node, [node]):
-            if other not in reasons:
-                reasons[other] = f"output of {name}"
-                driver[other] = name
+def stiff_nodes(circuit: Circuit, amplifiers: Sequence[Amplifier]) -> Held:
+    """All stiff nodes but references: held still, amplifiers' outputs, other controlled voltages, rails."""
+    own = {name for a in amplifiers for name in a.elements}
+    spread = _Spread(circuit.elements, lambda e: e.name not in own)
+    spread.start(GROUND, "ground", still=True)
+    for amplifier in amplifiers:
+        spread.start(amplifier.output, f"output of {amplifier.name}", amplifier.name)
+    _hold_controlled(spread, [e for e in circuit.elements if isinstance(e, Controlled) and e.name not in own])
     for amplifier in amplifiers:
         for rail in (amplifier.positive_supply, amplifier.negative_supply):
-            if rail is not None and rail not in reasons:
-                reasons[rail] = "rail"
-    return StiffNodes(reasons, driver, frozenset(signal), still)
+            if rail is not None:
+                spread.start(rail, "rail")
+    return spread.held
 
 
-def admittance(element: Element, hertz: float) -> float:
-    """Magnitude of a passive's admittance in siemens."""
-    if not isinstance(element, Passive):
-        return 0.0
-    omega = 6.283185307179586 * hertz
-    if element.kind == "r":
-        return 1.0 / abs(element.value)
-    return omega * abs(element.value) if element.kind == "c" else 1.0 / (omega * abs(element.value) or 1e-300)
-
-
-def references(candidates: Mapping[str, Sequence[Element]], stiff: StiffNodes, band: tuple[float, float]) -> list[str]:
-    """Nodes with a reservoir capacitor whose impedance to ground is below 1 % of the least impedance that hangs on
-    them, at both ends of the band."""
-    found = []
-    for node, elements in candidates.items():
-        down = [e for e in elements if isinstance(e, Passive) and any(n in stiff.still for n in e.nodes)]
-        # what leads straight to an output or a source is a load, not a stage that hangs on the node
-        hanging = [e for e in elements if not all(n == node or n in stiff.reasons for n in e.nodes)]
-        if not any(isinstance(e, Passive) and e.kind == "c" for e in down):
-            continue
-        if all(
-            max((admittance(e, f) for e in hanging), default=0.0) <= 0.01 * sum(admittance(e, f) for e in down)
-            for f in band
-        ):
-            found.append(node)
-    return found
+def _hold_controlled(spread: _Spread, loose: Sequence[Controlled]) -> None:
+    """Holds the outputs of controlled voltages whose other end is held, stacked ones in turn."""
+    at: dict[str, list[Controlled]] = {}
+    waiting: list[Controlled] = []
+    for element in loose:
+        if element.kind in "eh" and element.nodes[0] != element.nodes[1]:
+            waiting.append(element)
+            for node in element.nodes:
+                at.setdefault(node, []).append(element)
+    waiting.reverse()
+    while waiting:
+        element = waiting.pop()
+        free = [n for n in element.nodes if n not in spread.held.reasons]
+        if len(free) == 1:
+            # what it holds may be the other end of the next one
+            fresh = spread.start(free[0], f"output of {element.name}", element.name)
+            waiting += [e for node in fresh for e in at.get(node, ()) if e is not element]

@@ -1,265 +1,192 @@
 """Ports: where a stage meets the rest, and which terminals on the node are the stage's own."""
 
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import replace
+from collections.abc import Iterator, Sequence
 
-from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Passive, Source
-from xcheck.errors import CallError
-from xcheck.finding import Finding
+from xcheck.circuit.elements import GROUND, Element, Passive, Source
 from xcheck.place import Place
-from xcheck.stages.networks import Network
-from xcheck.stages.nodes import StiffNodes
+from xcheck.stages.nodes import is_signal
+from xcheck.stages.shares import Share
 from xcheck.stages.types import Amplifier, Kind, Port, Side, Stage, Terminal
-
-MOST_CANDIDATES = 50
-"""Nodes tried as the junction at which a shared network falls apart into its stages' own parts."""
+from xcheck.stages.wiring import Wiring, conducts, terminals_of
 
 
-class PortFinder:
-    """Makes stages with their ports, from networks already sorted by the stages that they feed."""
+def ports_of(name: str, members: tuple[Amplifier, ...], share: Share, others: Sequence[str], wiring: Wiring) -> Stage:
+    """A stage with its ports, inputs first. others: elements beside amplifiers that carry its loops."""
+    carried = {n: wiring.circuit.by_name[n] for n in others}
+    inside = {**share.elements, **carried}
+    order = wiring.order
+    names = tuple(sorted(inside, key=lambda n: order[n]))
+    terminals = own_terminals([inside[n] for n in names], members, wiring)
+    pointer = Pointer(members, wiring)
+    sides = _Sides(members, share, set(inside), wiring)
+    ports: dict[str, Port] = {}
+    for node, kind, left_out in sides.inputs([inside[n] for n in names]):
+        mine = tuple(t for t in terminals.get(node, ()) if t.element != left_out)
+        if mine and node not in ports:
+            ports[node] = make_port(name, node, "input", kind, mine, pointer)
+    for node in dict.fromkeys(a.output for a in members):
+        mine = tuple(terminals.get(node, ()))
+        if mine and node != GROUND and node not in ports:
+            ports[node] = make_port(name, node, "output", "signal", mine, pointer)
+    return Stage(name, members, names, tuple(ports.values()))
 
-    def __init__(
-        self, circuit: Circuit, amplifiers: Sequence[Amplifier], stiff: StiffNodes, virtual: Mapping[str, int],
-        shared: Mapping[int, set[int]], fed: Sequence[Sequence[Network]],
-    ) -> None:  # fmt: skip
-        self.circuit = circuit
-        self.amplifiers = amplifiers
-        self.stiff = stiff
-        self.virtual = virtual
-        self.shared = shared
-        self.fed = fed
-        self.boundary = frozenset(circuit.boundary)
-        self.supplies = {n for a in amplifiers for n in (a.positive_supply, a.negative_supply) if n is not None}
-        home = {node: network for networks in fed for network in networks for node in network.nodes}
-        self.fed_back = frozenset(
-            a.inverting for a in amplifiers if a.inverting in home and a.output in home[a.inverting].edge
-        )
-        self.owner = {name: a.name for a in amplifiers for name in a.elements}
-        self.at: dict[str, list[tuple[Element, int]]] = {}
-        for element in circuit.elements:
-            for index, node in enumerate(element.nodes):
-                self.at.setdefault(node, []).append((element, index))
-            if isinstance(element, (Controlled, Device)):
-                for node in dict.fromkeys(element.sensing):
-                    self.at.setdefault(node, []).append((element, -1))
 
-    def stage(self, name: str, group: int, members: tuple[Amplifier, ...]) -> Stage:
-        """One stage with its ports, inputs first."""
-        inside: dict[str, Element] = {}
-        junctions: list[str] = []
-        for network in self.fed[group]:
-            elements, junction = self._own_part(network, group, members)
-            inside.update({e.name: e for e in elements})
-            if junction is not None:
-                junctions.append(junction)
-        own = {n for a in members for n in a.elements} | set(inside)
-        outputs = {a.output for a in members}
-        ports: dict[str, Port] = {}
-        for node, kind, left_out in self._inputs(inside.values(), junctions, members, outputs):
-            if node not in ports:
-                port = self._port(name, node, "input", kind, own - left_out, members)
-                if port is not None:
-                    ports[node] = port
+def own_terminals(
+    elements: Sequence[Element], members: Sequence[Amplifier], wiring: Wiring
+) -> dict[str, list[Terminal]]:
+    """The terminals of a stage by node: of its own elements, and of its amplifiers' at their signal pins."""
+    found: dict[str, list[Terminal]] = {}
+    for element in elements:
+        for node, terminal in terminals_of(element):
+            found.setdefault(node, []).append(terminal)
+    for amplifier in members:
+        for node, terminals in wiring.of_amplifier[amplifier.name].items():
+            found.setdefault(node, []).extend(terminals)
+    return found
+
+
+class Pointer:
+    """Finds the place that a port of some amplifiers' stage points at."""
+
+    def __init__(self, members: Sequence[Amplifier], wiring: Wiring) -> None:
+        self.wiring = wiring
+        self.by_output: dict[str, Amplifier] = {}
         for amplifier in members:
-            port = self._port(name, amplifier.output, "output", "signal", own, members)
-            if port is not None and amplifier.output not in ports:
-                ports[amplifier.output] = replace(port, place=amplifier.place)
-        return Stage(name, members, tuple(inside), tuple(ports.values()))
+            self.by_output.setdefault(amplifier.output, amplifier)
+        self.by_name = {a.name: a for a in members}
+        self.first = members[0]
 
-    def _inputs(
-        self, inside: Iterable[Element], junctions: Sequence[str], members: Sequence[Amplifier], outputs: set[str]
-    ) -> Iterable[tuple[str, Kind, set[str]]]:
-        """Input nodes with their kind and the names of elements that count as outside there."""
-        nodes = [n for e in inside for n in e.nodes]
-        nodes += [n for a in members for n in (a.non_inverting, a.inverting)]
+    def place(self, node: str, side: Side, inside: Sequence[Terminal]) -> Place:
+        """An output's: its amplifier's card; else the node's field in the card of the stage's element there, or in
+        that of its amplifier."""
+        if side == "output" and node in self.by_output:
+            return self.by_output[node].place
+        for terminal in inside:
+            if terminal.element not in self.wiring.owner and terminal.index >= 0:
+                card = self.wiring.circuit.by_name[terminal.element].origin.card
+                if len(card.fields) > terminal.index + 1:
+                    return card.place(card.fields[terminal.index + 1])
+        owners = (self.wiring.owner.get(t.element, "") for t in inside)
+        amplifier = next((self.by_name[name] for name in owners if name in self.by_name), self.first)
+        instance = self.wiring.instances.get(amplifier.name)
+        if instance is not None:
+            on = [k for k, (_, flat) in enumerate(instance.pins) if flat == node]
+            card = instance.origin.card
+            if on and len(card.fields) > on[0] + 1:
+                return card.place(card.fields[on[0] + 1])
+        return amplifier.place
+
+
+def make_port(stage: str, node: str, side: Side, kind: Kind, inside: tuple[Terminal, ...], pointer: Pointer) -> Port:
+    """A port with the terminals that are the stage's own."""
+    wiring = pointer.wiring
+    mine = sum(conducts(wiring.circuit.by_name[t.element], t.index) for t in inside)
+    current = side == "input" and wiring.conducting[node] == mine
+    return Port(stage, node, node, side, kind, inside, current, pointer.place(node, side, inside))
+
+
+class _Sides:
+    """Which nodes are inputs of a stage."""
+
+    def __init__(self, members: Sequence[Amplifier], share: Share, own: set[str], wiring: Wiring) -> None:
+        self.members = members
+        self.share = share
+        self.own = own
+        self.wiring = wiring
+        self.names = {a.name for a in members} | own
+        self.outputs = {a.output for a in members}
+        self.amplifier_inputs = dict.fromkeys(n for a in members for n in (a.non_inverting, a.inverting))
+        self.inverting = {a.inverting for a in members}
+
+    def inputs(self, elements: Sequence[Element]) -> Iterator[tuple[str, Kind, str]]:
+        """Input nodes with their kind and the name of an element that counts as outside there, '' for none."""
+        nodes = [*(n for e in elements for n in e.nodes), *self.amplifier_inputs]
+        kinds: dict[str, Kind] = {}
         for node in dict.fromkeys(nodes):
-            if node in (GROUND, *outputs) or node in junctions:
-                continue
-            kind = self._kind(node)
-            if kind is None:
-                continue
-            yield node, kind, set()
-            behind = self._behind_series(node)
-            if behind is not None:
-                element, other = behind
-                yield other, kind, {element.name}
-        for node in junctions:
-            yield node, "signal", set()
+            kind = None if self._is_own_output(node) else self._kind(node)
+            if kind is not None:
+                kinds[node] = kind
+        if "signal" not in kinds.values() and not self.wiring.signals:
+            kinds.update(dict.fromkeys(self._open_inputs(), "signal"))
+        several = sum(kind == "signal" for kind in kinds.values()) > 1
+        for node, kind in kinds.items():
+            yield node, kind, ""
+            behind = self._behind_series(node, several) if kind == "signal" else None
+            if behind is not None and behind[1] not in kinds:
+                yield behind[1], kind, behind[0].name
+
+    def _is_own_output(self, node: str) -> bool:
+        held = self.wiring.held
+        return node == GROUND or node in self.outputs or held.driver.get(node) in self.names
 
     def _kind(self, node: str) -> Kind | None:
         """The kind of input that a node is, None where it is none."""
-        why = self.stiff.reasons.get(node)
+        if node in self.share.attached:
+            return self.share.attached[node]
+        held = self.wiring.held
+        why = held.reasons.get(node)
         if why is not None:
-            if why == "reference":
+            if why in ("rail", "reference"):
                 return "reference"
-            if why.startswith("output"):
-                return "signal"
-            if node in self.stiff.signal:
-                return "signal"
-            return None if why in ("rail", "ground") or node in self.supplies else "reference"
-        if node in self.boundary:
+            return "reference" if node in held.still and node not in held.signal else "signal"
+        if node in self.wiring.circuit.boundary:
             return "signal"
-        terminals = self.at.get(node, [])
-        if any(isinstance(e, Source) and e.kind == "i" for e, _ in terminals):
+        return self._kind_by_currents(node)
+
+    def _kind_by_currents(self, node: str) -> Kind | None:
+        """What current sources, or nothing at all, drive."""
+        wiring = self.wiring
+        touching = wiring.on(node)
+        currents = [e for e, k in touching if k >= 0 and e.name not in wiring.owner and not conducts(e, k)]
+        foreign = [e for e in currents if e.name not in self.own]
+        if any(not isinstance(e, Source) or is_signal(e) for e in foreign):
             return "signal"
-        alone = {self.owner.get(e.name, e.name) for e, _ in terminals}
-        return "signal" if len(alone) == 1 and node not in self.virtual else None
+        if foreign:
+            return "reference" if wiring.signals else "signal"
+        alone = len(touching) == 1 and node not in wiring.virtual
+        return "signal" if alone or all(e.name in wiring.owner for e, _ in touching) else None
 
-    def _behind_series(self, node: str) -> tuple[Element, str] | None:
-        """The one element that hangs on a source's node and the node behind it, unless that is a virtual ground."""
-        if node not in self.stiff.signal and self.stiff.reasons.get(node, "") in ("", "reference"):
+    def _open_inputs(self) -> list[str]:
+        """In a deck without signals, of a stage that nothing drives: the non-inverting inputs with a resistor or so to
+        ground, which are where the signal will come in."""
+        found = [a.non_inverting for a in self.members if a.non_inverting in self.share.resting]
+        return [n for n in dict.fromkeys(found) if n not in self.wiring.held.reasons]
+
+    def _behind_series(self, node: str, several: bool) -> tuple[Element, str] | None:
+        """The one element that hangs on a signal source's node, with the node behind it, where that is the source's
+        own impedance: not where the node behind is a virtual ground or takes part in the stage's feedback, and not
+        where it is the place at which several signals are added or subtracted."""
+        wiring = self.wiring
+        if node not in wiring.held.signal or node not in wiring.held.still:
             return None
-        if self.stiff.reasons[node].startswith("output"):
+        element = _only_element(node, wiring)
+        if element is None or element.name not in self.own:
             return None
-        others = [(e, k) for e, k in self.at[node] if not (isinstance(e, Source) and e.kind == "v")]
-        if len(others) != 1:
+        other = element.nodes[0] if element.nodes[1] == node else element.nodes[1]
+        if other in wiring.held.reasons or other in wiring.virtual or other in self.inverting:
             return None
-        element, index = others[0]
-        if not isinstance(element, Passive) or element.name in self.owner:
+        if several and other in self.amplifier_inputs:
             return None
-        other = element.nodes[1 - index]
-        if other in self.stiff.reasons or other in self.virtual or other in self.fed_back:
+        for beside, index in wiring.on(other):
+            if index < 0 or beside is element or beside.name in wiring.owner:
+                continue
+            far = [n for n in beside.nodes if n != other]
+            if any(self._is_own_output(n) and n != GROUND for n in far):
+                return None
+            if any(n in wiring.held.signal and _only_element(n, wiring) is beside for n in far):
+                return None
+        return element, other
+
+
+def _only_element(node: str, wiring: Wiring) -> Passive | None:
+    """The one passive on a source's node when nothing but sources of voltage is there beside it."""
+    found: Element | None = None
+    for element, _ in wiring.on(node):
+        if isinstance(element, Source) and element.kind == "v":
+            continue
+        if found is not None:
             return None
-        # a node that two sources reach through an element each is where they are summed
-        rivals = [e for e, _ in self.at[other] if e is not element and self._is_series(e, other)]
-        return None if rivals else (element, other)
-
-    def _is_series(self, element: Element, node: str) -> bool:
-        """Whether an element leads from a node to a source's node on which nothing else hangs."""
-        if not isinstance(element, Passive) or element.name in self.owner:
-            return False
-        far = element.nodes[0] if element.nodes[1] == node else element.nodes[1]
-        if far not in self.stiff.signal:
-            return False
-        return sum(not (isinstance(e, Source) and e.kind == "v") for e, _ in self.at[far]) == 1
-
-    def _own_part(self, network: Network, group: int, members: Sequence[Amplifier]) -> tuple[list[Element], str | None]:
-        """A network's elements that are the stage's own, and the node where they join what other stages share."""
-        if len(self.shared[id(network)]) < 2:
-            return network.elements, None
-        mine = {n for a in members for n in (a.non_inverting, a.inverting)}
-        mine &= network.nodes | network.edge
-        names = {a.name for a in members}
-        theirs = {n for a in self.amplifiers for n in (a.non_inverting, a.inverting) if a.name not in names}
-        theirs &= network.nodes | (network.edge & set(self.virtual))
-        theirs -= mine - network.nodes
-        by_node: dict[str, list[Element]] = {}
-        for element in network.elements:
-            for node in element.nodes:
-                by_node.setdefault(node, []).append(element)
-        free = network.nodes
-        for candidate in self._by_distance(mine, by_node, free)[:MOST_CANDIDATES]:
-            reached, passed = self._walk(mine - {candidate}, by_node, free - {candidate})
-            if not reached & theirs - {candidate}:
-                return list(passed.values()), candidate
-        return network.elements, None
-
-    @staticmethod
-    def _by_distance(start: set[str], by_node: Mapping[str, list[Element]], free: set[str]) -> list[str]:
-        order = dict.fromkeys(sorted(start & free))
-        waiting = sorted(start)
-        while waiting and len(order) <= MOST_CANDIDATES:
-            node = waiting.pop(0)
-            for element in by_node.get(node, ()):
-                for other in element.nodes:
-                    if other in free and other not in order:
-                        order[other] = None
-                        waiting.append(other)
-        return list(order)
-
-    @staticmethod
-    def _walk(
-        start: set[str], by_node: Mapping[str, list[Element]], free: set[str]
-    ) -> tuple[set[str], dict[str, Element]]:
-        """Nodes reached from some nodes through free nodes, and the elements passed."""
-        reached = set(start)
-        passed: dict[str, Element] = {}
-        waiting = list(start)
-        while waiting:
-            for element in by_node.get(waiting.pop(), ()):
-                passed[element.name] = element
-                for other in element.nodes:
-                    if other not in reached:
-                        reached.add(other)
-                        if other in free:
-                            waiting.append(other)
-        return reached, passed
-
-    def _port(
-        self, stage: str, node: str, side: Side, kind: Kind, own: set[str], members: Sequence[Amplifier]
-    ) -> Port | None:
-        """The port at a node, None where nothing of the stage touches it."""
-        inside = tuple(Terminal(e.name, k) for e, k in self.at.get(node, ()) if e.name in own)
-        if not inside:
-            return None
-        names = {t.element for t in inside}
-        outside = [(e, k) for e, k in self.at[node] if e.name not in names]
-        current = side == "input" and all(
-            k < 0 or (isinstance(e, Source) and e.kind == "i") or (isinstance(e, Controlled) and e.kind in "fg")
-            for e, k in outside
-        )
-        return Port(stage, node, node, side, kind, inside, current, self._place(inside, node, members))
-
-    def _place(self, inside: Sequence[Terminal], node: str, members: Sequence[Amplifier]) -> Place:
-        """The node's field in the card of the stage's element there, or the amplifier's card."""
-        for terminal in inside:
-            if terminal.element not in self.owner and terminal.index >= 0:
-                card = self.circuit.by_name[terminal.element].origin.card
-                if len(card.fields) > terminal.index + 1:
-                    return card.place(card.fields[terminal.index + 1])
-        amplifier = next((a for a in members if inside[0].element in a.elements), members[0])
-        return amplifier.place
-
-    def with_extra_ports(self, stages: list[Stage], wanted: Sequence[str]) -> tuple[list[Stage], tuple[Finding, ...]]:
-        """Stages with ports at further nodes, asked for by the caller or by directives. Raises CallError for a node
-        that the caller names and that is not there."""
-        findings: list[Finding] = []
-        asked: list[tuple[str, Place | None]] = [(node.lower(), None) for node in wanted]
-        for directive in self.circuit.directives:
-            if directive.words and directive.words[0].lower() == "port":
-                asked += [(word.lower(), directive.place) for word in directive.words[1:]]
-        for node, place in asked:
-            fault = f"there is no node `{node}`" if node not in self.at else self._extend(stages, node)
-            if fault and place is None:
-                raise CallError(fault)
-            if fault and place is not None:
-                findings.append(Finding("syntax", "error", place, fault, node, advice="name a node of the circuit"))
-        return stages, tuple(findings)
-
-    def _extend(self, stages: list[Stage], node: str) -> str:
-        """Adds a port at a node to the stage that it belongs to; says why not, '' where it did."""
-        touching = {e.name for e, _ in self.at[node]}
-        for index, stage in enumerate(stages):
-            own = {n for a in stage.amplifiers for n in a.elements} | set(stage.elements)
-            if any(port.node == node for port in stage.ports):
-                return ""
-            if own & touching:
-                port = self._port(stage.name, node, "output", "signal", own, stage.amplifiers)
-                if port is not None:
-                    stages[index] = replace(stage, ports=(*stage.ports, port))
-                    return ""
-        driving = self._driver_of(node)
-        for index, stage in enumerate(stages):
-            if driving in {a.output for a in stage.amplifiers}:
-                port = self._port(stage.name, node, "output", "signal", touching, stage.amplifiers)
-                if port is not None:
-                    stages[index] = replace(stage, ports=(*stage.ports, port))
-                    return ""
-        return f"node `{node}` belongs to no stage and hangs on no amplifier's output"
-
-    def _driver_of(self, node: str) -> str | None:
-        """The amplifier's output that a node hangs on through passives, None for none."""
-        outputs = {a.output for a in self.amplifiers}
-        reached = {node}
-        waiting = [node]
-        while waiting:
-            for element, _ in self.at.get(waiting.pop(), ()):
-                if not isinstance(element, Passive):
-                    continue
-                for other in element.nodes:
-                    if other in outputs:
-                        return other
-                    if other not in reached and other not in self.stiff.reasons:
-                        reached.add(other)
-                        waiting.append(other)
-        return None
+        found = element
+    if isinstance(found, Passive) and found.name not in wiring.owner and found.nodes[0] != found.nodes[1]:
+        return found
+    return None
