@@ -58,7 +58,9 @@ def test_difference() -> None:
         "v1 plus 0 ac 0.5\nv2 minus 0 sin(0 1 100)\nr1 minus n 10k\nr2 n out 100k\nr3 plus p 10k\nr4 p 0 100k\n"
         "xu1 p n vp vn out gaugeamp\nrl out 0 10k"
     )
-    assert ports(found, "xu1") == {"minus": "input signal", "plus": "input signal", "out": "output"}
+    assert ports(found, "xu1") == {
+        "minus": "input signal", "plus": "input signal", "p": "input signal", "out": "output",
+    }  # fmt: skip
     assert stage(found, "xu1").elements == ("r1", "r2", "r3", "r4")
 
 
@@ -99,18 +101,19 @@ def test_feedback_through_a_t_network() -> None:
     assert inside(found, "xu1.out") == {"r3", "xu1.*"}
 
 
-def test_multiple_feedback_has_no_port_behind_its_first_resistor() -> None:
+def test_multiple_feedback_has_a_port_behind_the_sources_only_element() -> None:
     found = board(
         "vin in 0 ac 1\nr1 in a 10k\nc1 a 0 1n\nr2 a out 10k\nr3 a n 10k\nc2 n out 100p\nxu1 0 n vp vn out gaugeamp"
     )
-    assert ports(found, "xu1") == {"in": "input signal", "out": "output"}
+    assert ports(found, "xu1") == {"in": "input signal", "a": "input signal", "out": "output"}
 
 
-def test_sallen_key_is_one_stage_without_a_port_inside() -> None:
+def test_sallen_key_is_one_stage_with_a_port_behind_the_sources_only_element() -> None:
     found = board(
         "vin in 0 ac 1\nr1 in a 10k\nc1 a out 10n\nr2 a p 10k\nc2 p 0 4.7n\nxu1 p out vp vn out gaugeamp\nrl out 0 10k"
     )
-    assert ports(found, "xu1") == {"in": "input signal", "out": "output"}
+    assert ports(found, "xu1") == {"in": "input signal", "a": "input signal", "out": "output"}
+    assert inside(found, "xu1.a") == {"c1", "r2"}
     assert inside(found, "xu1.out") == {"c1", "xu1.*"}
 
 
@@ -184,7 +187,7 @@ def test_feedback_over_two_amplifiers_makes_one_stage(second: str) -> None:
         f"r4 g2 out 1k\nxu2 {plus} {minus} vp vn out gaugeamp\nrl out 0 10k{extra}"
     )
     assert names(found) == ["xu1+xu2"]
-    assert ports(found, "xu1+xu2") == {"in": "input signal", "m": "output", "out": "output"}
+    assert ports(found, "xu1+xu2") == {"in": "input signal", "p": "input signal", "m": "output", "out": "output"}
     assert [a.name for a in stage(found, "xu1+xu2").amplifiers] == ["xu1", "xu2"]
 
 

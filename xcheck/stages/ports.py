@@ -108,10 +108,9 @@ class _Sides:
                 kinds[node] = kind
         if "signal" not in kinds.values() and not self.wiring.signals:
             kinds.update(dict.fromkeys(self._open_inputs(), "signal"))
-        several = sum(kind == "signal" for kind in kinds.values()) > 1
         for node, kind in kinds.items():
             yield node, kind, ""
-            behind = self._behind_series(node, several) if kind == "signal" else None
+            behind = self._behind_series(node) if kind == "signal" else None
             if behind is not None and behind[1] not in kinds:
                 yield behind[1], kind, behind[0].name
 
@@ -152,10 +151,10 @@ class _Sides:
         found = [a.non_inverting for a in self.members if a.non_inverting in self.share.resting]
         return [n for n in dict.fromkeys(found) if n not in self.wiring.held.reasons]
 
-    def _behind_series(self, node: str, several: bool) -> tuple[Element, str] | None:
-        """The one element that hangs on a signal source's node, with the node behind it, where that is the source's
-        own impedance: not where the node behind is a virtual ground or takes part in the stage's feedback, and not
-        where it is the place at which several signals are added or subtracted."""
+    def _behind_series(self, node: str) -> tuple[Element, str] | None:
+        """The one element that hangs on a signal source's node, with the node behind it, which is then a
+        port too: not where the node behind is a virtual ground (the element is the stage's own R1 there), and not
+        where two sources reach it through an element each, since then neither is the source's own."""
         wiring = self.wiring
         if node not in wiring.held.signal or node not in wiring.held.still:
             return None
@@ -165,14 +164,10 @@ class _Sides:
         other = element.nodes[0] if element.nodes[1] == node else element.nodes[1]
         if other in wiring.held.reasons or other in wiring.virtual or other in self.inverting:
             return None
-        if several and other in self.amplifier_inputs:
-            return None
         for beside, index in wiring.on(other):
             if index < 0 or beside is element or beside.name in wiring.owner:
                 continue
             far = [n for n in beside.nodes if n != other]
-            if any(self._is_own_output(n) and n != GROUND for n in far):
-                return None
             if any(n in wiring.held.signal and _only_element(n, wiring) is beside for n in far):
                 return None
         return element, other
