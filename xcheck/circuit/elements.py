@@ -168,3 +168,17 @@ class Circuit:
         for element in self.elements:
             table.setdefault(element.name, element)
         return table
+
+    @cached_property
+    def at(self) -> dict[str, tuple[Element, ...]]:
+        """Elements by the nodes that their terminals stand on, sensing left out, each once a node."""
+        table: dict[str, dict[int, Element]] = {}
+        for element in self.elements:
+            for node in element.nodes:
+                table.setdefault(node, {})[id(element)] = element
+        return {node: tuple(found.values()) for node, found in table.items()}
+
+    @cached_property
+    def coupled(self) -> frozenset[str]:
+        """Flat names of the inductors that are magnetically coupled."""
+        return frozenset(name for e in self.elements if isinstance(e, Coupling) for name in e.inductors)

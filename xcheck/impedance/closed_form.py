@@ -1,36 +1,52 @@
-"""Closed forms of all ports of recognised stages, evaluated with their real loads and sources."""
+"""Closed forms of all ports of recognised stages, evaluated with their real loads and sources.
 
-from dataclasses import dataclass
+A port's form needs what its stage's other ports look out into, and that is other stages' forms; along a chain of stages
+each is worked out once, in an order in which what it needs is there already.
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from xcheck.circuit.arrays import Complex, Real
-from xcheck.impedance.formulas import written
-from xcheck.impedance.surroundings import Outside, Surroundings, neighbours
+from xcheck.impedance.couplings import Couplings
+from xcheck.impedance.surroundings import Outside, PortImpedance, Surroundings
 from xcheck.impedance.types import ClosedForm
-from xcheck.stages.types import AmplifierResponse, Partition, Port, Stage
-from xcheck.topologies import classify, forms
-from xcheck.topologies.forms import Places
-from xcheck.topologies.network import GROUND, Joined, Network, Pair, mesh
-from xcheck.topologies.sketch import network_of, still_nodes
+from xcheck.notation import engineering
+from xcheck.stages.types import Partition, Port, Stage
+from xcheck.topologies.branches import known
+from xcheck.topologies.drawing import Draughtsman
+from xcheck.topologies.expression import Expression, number
+from xcheck.topologies.forms import Core, core_of
+from xcheck.topologies.placing import NotPlaced, PortView, closed_form, ideal
+from xcheck.topologies.recognition import recognise
+from xcheck.topologies.topology import Topology
 
-NO_FORM = ("unclassified", "comparator", "schmitt-trigger")
 DEFAULT_BAND = (10.0, 10e3)
-MOST_UPSTREAM = 50
-"""Stages looked through for a common source; a longer chain counts as having one."""
+
+TELLING = 1e-7
+"""Relative change of a port's impedance, when a neighbour's is halved and doubled, below which it does not matter that
+the neighbour's own value rests on a premise."""
+
+LIMIT_OHM = 1e24
+"""At DC, the limit of a small frequency, an impedance above this is infinite and one below its inverse zero."""
 
 
 @dataclass(frozen=True)
 class Forms:
     """by_subject: the closed form of each port, or the reason why there is none; neighbours: ohm, shape (F,), what
-    each port looks out into."""
+    each port looks out into: inf for nothing, 0 for a source that holds it."""
 
     by_subject: dict[str, ClosedForm | str]
     neighbours: dict[str, Complex]
 
 
 def closed_forms(partition: Partition, frequency: Real, band: tuple[float, float] = DEFAULT_BAND) -> Forms:
-    """The closed forms on a frequency grid (Hz, shape (F,)); single numbers are quoted at mid band."""
+    """The closed forms on a frequency grid (Hz, shape (F,)); band: Hz, at whose middle topologies are told and single
+    numbers are quoted."""
+    if not partition.stages:
+        return Forms({}, {})
     return _Evaluation(partition, frequency, band).run()
 
 
@@ -38,254 +54,205 @@ class _Evaluation:
     def __init__(self, partition: Partition, frequency: Real, band: tuple[float, float]) -> None:
         self.partition = partition
         self.frequency = frequency
-        self.middle = int(np.argmin(np.abs(np.log(frequency / np.sqrt(band[0] * band[1])))))
-        self.surroundings = Surroundings(partition, frequency)
+        with np.errstate(divide="ignore"):
+            self.at = int(np.argmin(np.abs(np.log(frequency / np.sqrt(band[0] * band[1])))))
+        self.draughtsman = Draughtsman(partition)
         self.stages = {stage.name: stage for stage in partition.stages}
-        self.topology = {s.name: classify(partition, s, band=band).topology for s in partition.stages}
-        self.responses: dict[int, AmplifierResponse] = {}
-        self.outer: dict[str, Outside] = {}
+        self.topology = {s.name: recognise(self.draughtsman, s, band)[0] for s in partition.stages}
+        self.outer = {s.name: self._outer(s) for s in partition.stages}
+        self.couplings = Couplings(partition, self.outer)
+        self.surroundings = Surroundings(partition, frequency, self.couplings)
+        self.cores: dict[int, Core] = {}
+        self.outsides: dict[str, Outside] = {}
         self.found: dict[str, ClosedForm | str] = {}
-        self.busy: set[str] = set()
-        self.driver = {p.node: s.name for s in partition.stages for p in s.ports if p.side == "output"}
+        self.started: set[str] = set()
+        self.alone: dict[str, PortImpedance] = {}
 
     def run(self) -> Forms:
-        # outputs first and in deck order, inputs from the end of the chain: each then finds what it looks out
-        # into already known, and a long chain needs no deep recursion
         ports = [port for stage in self.partition.stages for port in stage.ports]
-        for port in (p for p in ports if p.side == "output"):
-            self.form(port)
-        for port in reversed([p for p in ports if p.side == "input"]):
-            self.form(port)
         for port in ports:
-            self.outside(port)
-        ordered = {port.subject: self.found[port.subject] for port in ports}
-        return Forms(ordered, neighbours(self.partition, self.outer))
+            self._complete(port)
+        by_subject = {port.subject: self.found[port.subject] for port in ports}
+        shape = self.frequency.shape
+        return Forms(by_subject, {port.subject: self._outside(port).impedance(shape) for port in ports})
 
-    def impedance(self, port: Port) -> Complex | None:
-        """A port's impedance by closed form, None where it has none or is being worked out."""
-        if port.subject in self.busy or len(self.busy) > 60:
-            return None
-        form = self.form(port)
-        return form.value if isinstance(form, ClosedForm) else None
+    def _complete(self, port: Port) -> None:
+        """Works out a port and what it needs, depth first without recursion: chains may be long."""
+        waiting = [port]
+        while waiting:
+            current = waiting[-1]
+            if current.subject not in self.started:
+                self.started.add(current.subject)
+                waiting += [q for q in self._needs(current) if q.subject not in self.started]
+                continue
+            waiting.pop()
+            if current.subject not in self.found:
+                self.found[current.subject] = self._form(current)
 
-    def outside(self, port: Port) -> Outside:
-        if port.subject not in self.outer:
-            self.outer[port.subject] = self.surroundings.outside(port, self.impedance)
-        return self.outer[port.subject]
+    def _needs(self, port: Port) -> list[Port]:
+        """Ports of other stages whose forms this one's needs."""
+        needed: list[Port] = []
+        for other in self._others(port):
+            needed += [q for q in self.surroundings.neighbours(other) if self._told_apart(q)]
+        return needed
 
-    def form(self, port: Port) -> ClosedForm | str:
+    def _others(self, port: Port) -> list[Port]:
+        """Ports of a stage that bear on the impedance at one of them: its other inputs, and the output of an input."""
+        return [
+            p for p in self.outer[port.stage]
+            if p.node != port.node and (p.side == "input" or port.side == "input")
+            and not self.draughtsman.outside_at(self.stages[port.stage], port) & {t.element for t in p.inside}
+        ]  # fmt: skip
+
+    def _outer(self, stage: Stage) -> list[Port]:
+        """The ports at which a stage meets the rest: its inputs but those behind a source's series element, and its
+        amplifiers' outputs, but no nodes further on that were asked for."""
+        outputs = {a.output for a in stage.amplifiers}
+        inputs = self.draughtsman.outer_inputs(stage)
+        return [p for p in stage.ports if (p.node in inputs if p.side == "input" else p.node in outputs)]
+
+    def _told_apart(self, port: Port) -> bool:
+        """Whether a port is asked for its full form by its neighbours: not where connections form a ring, or too many
+        hang on one net."""
+        return port.subject not in self.couplings.on_ring and not self.couplings.crowded(port.node)
+
+    def _impedance(self, port: Port) -> PortImpedance:
+        """What a port is to its neighbours. On a ring, or where working it out needs itself, it is the
+        stage's alone, its other inputs at ground and its output open."""
+        unfinished = port.subject in self.started and port.subject not in self.found
+        if unfinished or not self._told_apart(port):
+            if port.subject not in self.alone:
+                form = self._form(port, alone=True)
+                self.alone[port.subject] = PortImpedance(None if isinstance(form, str) else form.value, False)
+            return self.alone[port.subject]
         if port.subject not in self.found:
-            self.busy.add(port.subject)
-            self.found[port.subject] = self._work_out(self.stages[port.stage], port)
-            self.busy.discard(port.subject)
-        return self.found[port.subject]
+            self._complete(port)
+        form = self.found[port.subject]
+        if isinstance(form, str):
+            return PortImpedance(None, False)
+        return PortImpedance(form.value, form.exact)
 
-    def _work_out(self, stage: Stage, port: Port) -> ClosedForm | str:
+    def _outside(self, port: Port) -> Outside:
+        if port.subject not in self.outsides:
+            self.outsides[port.subject] = self.surroundings.outside(port, self._impedance)
+        return self.outsides[port.subject]
+
+    def _form(self, port: Port, alone: bool = False) -> ClosedForm | str:
+        """alone: with sources without impedance at the other inputs and no load."""
+        try:
+            return self._worked_out(port, alone)
+        except NotPlaced as refusal:
+            return f"no closed form: {refusal}"
+
+    def _worked_out(self, port: Port, alone: bool) -> ClosedForm:
+        stage = self.stages[port.stage]
+        topology, core = self._ready(stage)
+        others = self._others(port)
+        outsides = {p.node: Outside(held=p.side == "input") if alone else self._outside(p) for p in others}
+        view = self._view(stage, port, others, outsides)
+        form = closed_form(view, topology, core, self.at)
+        premises = self._premises(stage, view, others, outsides)
+        if form is not None and not premises:
+            premises = [
+                f"only nearly known at {node}: {', '.join(outside.doubtful)}"
+                for node, outside in outsides.items()
+                if outside.doubtful and self._matters(topology, core, view, node, form.value)
+            ]
+        return self._written(form, view, premises)
+
+    def _ready(self, stage: Stage) -> tuple[Topology, Core]:
+        """What a stage's closed forms need; raises NotPlaced where it is not there."""
         topology = self.topology[stage.name]
-        if topology in NO_FORM:
-            return f"no closed form: the topology is {topology}"
-        amplifier = stage.amplifiers[0]
-        model = amplifier.open_loop.model
-        if model is None:
-            return f"no closed form: {amplifier.open_loop.reason}"
-        left_out = frozenset(self._left_out(stage, port))
-        network = network_of(self.partition, stage, left_out)
-        if isinstance(network, str):
-            return f"no closed form: {network}"
-        premises = [amplifier.open_loop.reason] if not amplifier.open_loop.exact else []
-        premises += self._soft_nodes(stage)
-        shunts, ground_too, dropped = self._sources(stage, port)
-        if dropped:
-            # a source of unknown impedance can change everything behind it: no number is better than a wrong one
-            return f"no closed form: {'; '.join(dropped)}"
-        if self._reconverges(stage):
-            premises.append("two inputs come from one stage, and are taken as independent")
-        drawn = self._draw(stage, port, network, shunts, ground_too)
-        if isinstance(drawn, str):
-            return f"no closed form: {drawn}"
-        places, side, links = drawn
-        if side != "output":
-            load = self._load(stage, premises)
-            places = _with_load(places, load)
-        if id(model) not in self.responses:
-            self.responses[id(model)] = model.response(self.frequency)
-        response = self.responses[id(model)]
-        value = _EVALUATE[side](response, places)
-        rule, rule_text = _rule(side, places, links)
-        formula, numbers = written(
-            side, response, places, links, value, self.middle, float(self.frequency[self.middle])
+        if topology is None or not topology.has_form:
+            raise NotPlaced(f"the topology is {'unclassified' if topology is None else topology.name}")
+        loop = stage.amplifiers[0].open_loop
+        if loop.model is None:
+            raise NotPlaced(loop.reason)
+        shared = [name for name in stage.elements if len(self.surroundings.owners[name]) > 1]
+        if shared:
+            raise NotPlaced(f"`{shared[0]}` belongs to several stages")
+        if id(loop.model) not in self.cores:
+            self.cores[id(loop.model)] = core_of(loop.model.response(self.surroundings.frequency), self.at)
+        return topology, self.cores[id(loop.model)]
+
+    def _premises(
+        self, stage: Stage, view: PortView, others: list[Port], outsides: Mapping[str, Outside]
+    ) -> list[str]:  # fmt: skip
+        """What is taken for granted though it is not quite so, in words. Raises NotPlaced for a source of unknown
+        impedance: it can change everything behind it, and no number is better than a wrong one."""
+        loop = stage.amplifiers[0].open_loop
+        premises = [] if loop.exact else [loop.reason]
+        premises += [f"{node} taken as AC ground" for node in view.drawing.soft]
+        if view.drawing.tied:
+            premises.append("nodes that a voltage source ties together taken as one")
+        ring = [p.name for p in self.outer[stage.name] if p.subject in self.couplings.on_ring]
+        if ring or any(outside.coupled for outside in outsides.values()):
+            premises.append(f"{', '.join(ring)} taken as independent, though other stages tie them together")
+        for other in others:
+            unknown = ", ".join(outsides[other.node].unknown)
+            if unknown and other.side == "input":
+                raise NotPlaced(f"the source at {other.node} is not known ({unknown})")
+            if unknown:
+                premises.append(f"not counted as load: {unknown}")
+        return premises
+
+    def _view(self, stage: Stage, port: Port, others: list[Port], outsides: Mapping[str, Outside]) -> PortView:
+        left_out = self.draughtsman.outside_at(stage, port)
+        drawing = self.draughtsman.draw(stage, self.surroundings.frequency, left_out)
+        if isinstance(drawing, str):
+            raise NotPlaced(drawing)
+        inputs = {p.node: outsides[p.node] for p in others if p.side == "input"}
+        load = next((outsides[p.node].branch for p in others if p.side == "output"), None)
+        return PortView(
+            drawing=drawing,
+            node=port.node,
+            side=port.side,
+            held=frozenset(node for node, outside in inputs.items() if outside.held),
+            stiff=frozenset(node for node, outside in inputs.items() if outside.held or outside.driven),
+            sources={node: outside.branch for node, outside in inputs.items() if outside.branch is not None},
+            load=load,
         )
-        return ClosedForm(formula, numbers, value, rule, rule_text, not premises, tuple(premises))
 
-    def _reconverges(self, stage: Stage) -> bool:
-        """Whether two inputs are driven, directly or through other stages, by one and the same stage."""
-        driven = [d for p in stage.ports if p.side == "input" for d in [self.driver.get(p.node)] if d is not None]
-        if len(driven) < 2:
-            return False
-        seen: set[str] = set()
-        for first in dict.fromkeys(driven):
-            upstream: set[str] = set()
-            waiting = [first]
-            while waiting:
-                name = waiting.pop()
-                if name in upstream:
-                    continue
-                upstream.add(name)
-                if len(upstream) > MOST_UPSTREAM:
-                    return True
-                ports = self.stages[name].ports
-                waiting += [d for p in ports if p.side == "input" for d in [self.driver.get(p.node)] if d is not None]
-            if upstream & seen:
+    def _matters(self, topology: Topology, core: Core, view: PortView, node: str, value: Complex) -> bool:
+        """Whether what a port of the stage looks out into, halved or doubled, can be told from this one."""
+        for factor in (0.5, 2.0):
+            sources, load = dict(view.sources), view.load
+            if node in sources:
+                sources[node] = known(sources[node].text, sources[node].admittance * factor)
+            elif load is not None:
+                load = known(load.text, load.admittance * factor)
+            other = closed_form(replace(view, sources=sources, load=load), topology, core, self.at)
+            if other is None or np.any(np.abs(other.value - value) > TELLING * np.abs(value)):
                 return True
-            seen |= upstream
-        return len(driven) != len(set(driven))
+        return False
 
-    def _soft_nodes(self, stage: Stage) -> list[str]:
-        """Rails and references that the drawing takes as ground although they move a little, where it matters."""
-        soft = {n for n in self.partition.references if n not in self.partition.ac_ground}
-        if not soft:
-            return []
-        circuit = self.partition.circuit
-        still = soft | set(self.partition.ac_ground)
-        own = [circuit.by_name[name] for a in stage.amplifiers for name in a.elements]
-        outer = [circuit.by_name[name] for name in stage.elements]
-        pins = {n for a in stage.amplifiers for n in (a.inverting, a.non_inverting)}
-        used = {n for e in own if not set(e.nodes) <= still for n in e.nodes if n in soft}
-        used |= {n for e in outer for n in e.nodes if n in soft} | (pins & soft)
-        return [f"{n} taken as AC ground" for n in sorted(used)]
+    def _written(self, form: Expression | None, view: PortView, premises: list[str]) -> ClosedForm:
+        rule, rule_text = ideal(view)
+        exact = not premises
+        if form is None:
+            none = view.side == "input"
+            value = np.full(self.frequency.shape, np.inf if none else 0.0, dtype=np.complex128)
+            text = "infinite" if none else "0 Ohm"
+            return ClosedForm(text, text, value, self._at_dc(rule), rule_text, exact, tuple(premises))
+        value = self._at_dc(form.value)
+        legend = ", ".join(f"{symbol} = {meaning}" for symbol, meaning in form.legend)
+        hertz = float(self.frequency[self.at])
+        where = engineering(hertz, "Hz") if hertz else "DC"
+        return ClosedForm(
+            formula=f"{form.text}; {legend}" if legend else form.text,
+            numbers=f"{form.figures} = {number(complex(value[self.at]))} at {where}",
+            value=value,
+            rule_of_thumb=self._at_dc(rule),
+            rule_text=rule_text,
+            exact=exact,
+            assumptions=tuple(dict.fromkeys(premises)),
+        )
 
-    def _left_out(self, stage: Stage, port: Port) -> set[str]:
-        """Elements of the stage that are outside at this port: a source's series element."""
-        inside = {t.element for t in port.inside}
-        names = set(stage.elements)
-        return {e.name for e, _ in self.surroundings.at.get(port.node, ()) if e.name in names and e.name not in inside}
-
-    def _sources(self, stage: Stage, port: Port) -> tuple[dict[str, Complex], set[str], list[str]]:
-        """Source impedances at the stage's other inputs: admittances to ground, nodes that sources hold, and what
-        could not be counted."""
-        shunts: dict[str, Complex] = {}
-        held: set[str] = set()
-        dropped: list[str] = []
-        for other in stage.ports:
-            if other.side != "input" or other.node == port.node or self._left_out(stage, other):
-                continue
-            if other.node in self.partition.ac_ground:
-                held.add(other.node)
-                continue
-            seen = self.outside(other)
-            shunts[other.node] = seen.admittance
-            if seen.dropped:
-                dropped.append(f"not counted at {other.node}: {seen.dropped}")
-        return shunts, held, dropped
-
-    def _load(self, stage: Stage, premises: list[str]) -> Complex:
-        for port in stage.ports:
-            if port.side == "output" and port.node == stage.amplifiers[0].output:
-                seen = self.outside(port)
-                if seen.dropped:
-                    premises.append(f"not counted as load: {seen.dropped}")
-                return seen.admittance
-        premises.append("the load is not known")
-        return np.zeros(self.frequency.shape, dtype=np.complex128)
-
-    def _draw(
-        self, stage: Stage, port: Port, network: Network, shunts: dict[str, Complex], held: set[str]
-    ) -> "tuple[Places, str, _Links] | str":
-        amplifier = stage.amplifiers[0]
-        ground = still_nodes(self.partition, stage.ports) | held
-
-        def name(node: str) -> str:
-            return GROUND if node in ground and node != port.node else node
-
-        grounded = Network()
-        for pair, branch in network.branches.items():
-            a, b = (name(node) for node in sorted(pair))
-            for part in branch.members if hasattr(branch, "members") else (branch,):
-                grounded.add(part, a, b)  # type: ignore[arg-type]  # only parallel parts stand between two nodes here
-        n, p, o, x = name(amplifier.inverting), name(amplifier.non_inverting), name(amplifier.output), port.node
-        terminals = list(dict.fromkeys((n, p, o, x, GROUND)))
-        kept = [*terminals, *(node for node in shunts if node not in ground)]
-        links = _Links(mesh(grounded.reduced(kept), terminals, self.frequency, {
-            node: y for node, y in shunts.items() if node not in ground
-        }), self.frequency.shape)  # fmt: skip
-        return _sort_places(links, n, p, o, x, port.side)
-
-
-@dataclass(frozen=True)
-class _Links:
-    """What lies between terminals, with zeros where nothing does."""
-
-    found: dict[Pair, Joined]
-    shape: tuple[int, ...]
-    names: dict[str, str] | None = None
-
-    def between(self, a: str, b: str) -> Complex:
-        joined = self.found.get(frozenset((a, b))) if a != b else None
-        return np.zeros(self.shape, dtype=np.complex128) if joined is None else joined.admittance
-
-    def text(self, a: str, b: str) -> str:
-        joined = self.found.get(frozenset((a, b))) if a != b else None
-        return "" if joined is None else joined.text
-
-
-def _sort_places(links: _Links, n: str, p: str, o: str, x: str, side: str) -> "tuple[Places, str, _Links] | str":
-    """The places of a form. Which one: the port leads to one input alone, or is the output."""
-    y = links.between
-    zero, infinite = np.zeros(links.shape, complex), np.full(links.shape, np.inf, dtype=np.complex128)
-    if p not in (GROUND, o) and np.any(y(p, o)) and p != n:
-        return "there is positive feedback"
-    yf = infinite if n == o else y(n, o)
-    if not np.any(yf):
-        return "there is no feedback"
-    yp = infinite if p == GROUND else y(p, GROUND)
-    across = zero if p == GROUND else y(n, p)
-    yg, y_out = (zero, y(o, GROUND)) if n == o else (y(n, GROUND), y(o, GROUND))
-    names = {"f": links.text(n, o), "g": links.text(n, GROUND), "p": links.text(p, GROUND)}
-    if side == "output":
-        if x != o:
-            return "the port is a further node"
-        return Places(infinite, zero, yg, yp, across, yf, y_out, zero), "output", _named(links, names)
-    to_n, to_p = np.any(y(x, n)) or x == n, np.any(y(x, p)) or x == p
-    if np.any(y(x, o)) and x not in (n, o):
-        return "the port is tied to the output"
-    if to_n and to_p and p != GROUND:
-        return "the port leads to both inputs"
-    pin = p if to_p and p != GROUND else n if to_n else ""
-    if not pin:
-        return "the port leads to no input of the amplifier"
-    direct = x == pin
-    names["1"] = "" if direct else links.text(x, pin)
-    y1 = infinite if direct else y(x, pin)
-    y_port = zero if direct else y(x, GROUND)
-    return Places(y1, y_port, yg, yp, across, yf, y_out, zero), "p" if pin == p else "n", _named(links, names)
-
-
-def _named(links: _Links, names: dict[str, str]) -> _Links:
-    return _Links(links.found, links.shape, names)
-
-
-def _with_load(places: Places, load: Complex) -> Places:
-    return Places(places.y1, places.y_port, places.yg, places.yp, places.y_across, places.yf, places.y_out, load)
-
-
-_EVALUATE = {"n": forms.inverting_input, "p": forms.non_inverting_input, "output": forms.output}
-
-
-def _rule(side: str, x: Places, links: _Links) -> tuple[Complex, str]:
-    """The ideal amplifier's value: ohm, shape (F,), and in words."""
-    names = links.names or {}
-    if side == "output":
-        return np.zeros(links.shape, dtype=np.complex128), "zero"
-    with np.errstate(divide="ignore", invalid="ignore"):
-        z1 = np.where(np.isinf(x.y1), 0.0, 1.0 / x.y1)
-        behind = np.zeros(links.shape, complex) if side == "n" else np.where(x.yp == 0, np.inf, 1.0 / x.yp)
-        inner = np.where(np.isinf(behind), 0.0, 1.0 / (z1 + behind))
-        total = x.y_port + inner
-        rule = np.where(total == 0, np.inf, 1.0 / total).astype(np.complex128)
-    rule = np.where(np.isnan(rule) | np.isinf(total), 0.0, rule).astype(np.complex128)
-    words = [names.get("1", "")] + ([names.get("p", "")] if side == "p" else [])
-    if np.all(np.isinf(rule)):
-        return rule, "infinite"
-    return rule, " + ".join(
-        f"({w})" if "||" in w and len([v for v in words if v]) > 1 else w for w in words if w
-    ) or "zero"
+    def _at_dc(self, value: Complex) -> Complex:
+        """With the limit at DC taken."""
+        still = self.frequency == 0
+        if not np.any(still):
+            return value
+        size = np.abs(value)
+        limit = np.where(size > LIMIT_OHM, np.inf, np.where(size < 1 / LIMIT_OHM, 0.0, value))
+        return np.where(still, limit, value).astype(np.complex128)

@@ -6,7 +6,7 @@ from xcheck.topologies.topology import Topology
 
 def fits(s: Sketch) -> bool:
     """No feedback at all."""
-    return not s.closed and s.positive is None
+    return not s.shorted and s.feedback is None and s.positive is None
 
 
 TOPOLOGY = Topology(
@@ -14,4 +14,5 @@ TOPOLOGY = Topology(
     fits=fits,
     source="common practice",
     input_rule="open-loop",
+    has_form=False,
 )

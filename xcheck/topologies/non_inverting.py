@@ -1,18 +1,13 @@
 """One input at the non-inverting input, a divider in the feedback."""
 
 from xcheck.topologies.sketch import Sketch
-from xcheck.topologies.topology import Topology
+from xcheck.topologies.topology import Symbols, Topology
 
 
 def fits(s: Sketch) -> bool:
     """One input at the non-inverting input, a divider in the feedback."""
-    return (
-        s.closed
-        and s.positive is None
-        and not s.signal_n
-        and bool(s.signal_p)
-        and (s.ground_n is not None or bool(s.reference_n))
-    )
+    leg = s.ground_n is not None or bool(s.reference_n)
+    return s.closed and bool(s.signal_p) and not s.signal_n and leg
 
 
 TOPOLOGY = Topology(
@@ -20,4 +15,5 @@ TOPOLOGY = Topology(
     fits=fits,
     source="Sedra and Smith, Microelectronic Circuits, the non-inverting configuration; from memory",
     input_rule="infinite",
+    at_output=Symbols(leg="Zg"),
 )

@@ -1,19 +1,13 @@
 """Several inputs joined at the non-inverting input."""
 
+from xcheck.topologies.judgements import added_at_p
 from xcheck.topologies.sketch import Sketch
-from xcheck.topologies.topology import Topology
+from xcheck.topologies.topology import Symbols, Topology
 
 
 def fits(s: Sketch) -> bool:
     """Several inputs joined at the non-inverting input."""
-    return (
-        s.closed
-        and s.positive is None
-        and not s.signal_n
-        and len(s.signal_p) + len(s.reference_p) > 1
-        and bool(s.signal_p)
-        and not s.direct_p
-    )
+    return s.closed and bool(s.signal_p) and not s.signal_n and added_at_p(s) > 1
 
 
 TOPOLOGY = Topology(
@@ -21,4 +15,5 @@ TOPOLOGY = Topology(
     fits=fits,
     source="common practice",
     input_rule="the input's branch and the other branches at the non-inverting input",
+    at_output=Symbols(leg="Zg"),
 )

@@ -6,7 +6,7 @@ from xcheck.topologies.topology import Topology
 
 def fits(s: Sketch) -> bool:
     """Positive feedback alone: the output is driven to its limits."""
-    return not s.closed and s.positive is not None
+    return not s.shorted and s.feedback is None and s.positive is not None
 
 
 TOPOLOGY = Topology(
@@ -14,4 +14,5 @@ TOPOLOGY = Topology(
     fits=fits,
     source="common practice",
     input_rule="outside a small-signal check",
+    has_form=False,
 )

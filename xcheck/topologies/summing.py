@@ -1,18 +1,12 @@
 """Several inputs into one virtual ground."""
 
 from xcheck.topologies.sketch import Sketch
-from xcheck.topologies.topology import Topology
+from xcheck.topologies.topology import Symbols, Topology
 
 
 def fits(s: Sketch) -> bool:
     """Several inputs into one virtual ground."""
-    return (
-        s.closed
-        and s.positive is None
-        and not s.signal_p
-        and len(s.signal_n) + len(s.reference_n) > 1
-        and bool(s.signal_n)
-    )
+    return s.closed and not s.signal_p and bool(s.signal_n) and len(s.signal_n) + len(s.reference_n) > 1
 
 
 TOPOLOGY = Topology(
@@ -20,4 +14,6 @@ TOPOLOGY = Topology(
     fits=fits,
     source="Sedra and Smith, Microelectronic Circuits, the weighted summer; from memory",
     input_rule="each input's own impedance to the virtual ground",
+    at_inverting=Symbols(leg="Zg"),
+    at_output=Symbols(leg="Zg"),
 )

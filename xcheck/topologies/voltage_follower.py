@@ -1,19 +1,12 @@
 """One input at the non-inverting input, the whole output fed back."""
 
 from xcheck.topologies.sketch import Sketch
-from xcheck.topologies.topology import Topology
+from xcheck.topologies.topology import Symbols, Topology
 
 
 def fits(s: Sketch) -> bool:
     """One input at the non-inverting input, the whole output fed back."""
-    return (
-        s.closed
-        and s.positive is None
-        and not s.signal_n
-        and not s.reference_n
-        and bool(s.signal_p)
-        and s.ground_n is None
-    )
+    return s.closed and bool(s.signal_p) and not s.signal_n and not s.reference_n and s.ground_n is None
 
 
 TOPOLOGY = Topology(
@@ -21,4 +14,5 @@ TOPOLOGY = Topology(
     fits=fits,
     source="Sedra and Smith, Microelectronic Circuits, the voltage follower; from memory",
     input_rule="infinite",
+    at_output=Symbols(leg="Zg"),
 )
