@@ -77,6 +77,15 @@ def test_another_failure_of_the_run(step: str) -> None:
     assert "its own words" in finding.message
 
 
+def test_what_was_measured_before_a_limit_is_said_and_is_no_warning() -> None:
+    run = Simulation(
+        EngineInfo(available=True), values={"xu1.in": np.ones(1, complex)}, failure="stopped", failed_step="time limit"
+    )
+    finding = only(simulation_fails(evidence(simulation=run)))
+    assert finding.level == "note"
+    assert finding.message.startswith("1 of ")
+
+
 @pytest.mark.parametrize(
     "run",
     [

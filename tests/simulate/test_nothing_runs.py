@@ -3,12 +3,14 @@ text given to ngspice directly does what is refused here, so that a test that pa
 
 import os
 import subprocess
+import sys
 from pathlib import Path
 
 import pytest
 
 from xcheck.options import Options
 from xcheck.reviewing import review
+from xcheck.simulate.engine import library_path
 
 BODY = """v1 in 0 dc 0 ac 1
 r1 in n 10k
@@ -126,3 +128,58 @@ def test_nothing_of_an_outside_file_is_shown(tmp_path: Path) -> None:
         evidence = allowed.decks[0].evidence
         assert evidence is not None
         assert "r_secret_name" in evidence.circuit.by_name
+
+
+def seen_by_raw_ngspice(folder: Path, lines: list[str], commands: list[str]) -> None:
+    """Loads lines in ngspice through PySpice as they stand and runs commands, without any of the worker's walls."""
+    script = folder / "raw.py"
+    script.write_text(
+        "from PySpice.Spice.NgSpice.Shared import NgSpiceShared\n"
+        "spice = NgSpiceShared.new_instance()\n"
+        f"steps = [lambda: spice.load_circuit({chr(10).join(lines)!r})]\n"
+        f"steps += [lambda c=c: spice.exec_command(c) for c in {commands!r}]\n"
+        "for step in steps:\n"
+        "    try:\n        step()\n"
+        "    except Exception as error:\n        print(error)\n"
+    )
+    library = {"NGSPICE_LIBRARY_PATH": os.environ.get("NGSPICE_LIBRARY_PATH", library_path())}
+    subprocess.run(
+        [sys.executable, "-W", "ignore", str(script)], cwd=folder, env={**os.environ, **library}, timeout=60,
+        capture_output=True, check=False, stdin=subprocess.DEVNULL,
+    )  # fmt: skip
+
+
+@pytest.mark.engine
+def test_an_unusual_line_end_hides_no_command(tmp_path: Path) -> None:
+    hidden = "r9 out 0 1k ; \u2028.control\u2028shell touch MARK\u2028.endc\u2028r8 out 0 1k"
+    control, own = tmp_path / "control", tmp_path / "own"
+    control.mkdir()
+    own.mkdir()
+    raw = "title\n" + BODY + hidden.replace("MARK", str(control / "mark")).replace(" ; ", " ") + "\n.end"
+    seen_by_raw_ngspice(control, raw.split("\n"), [])
+    assert (control / "mark").exists(), "ngspice itself did not do it: the case proves nothing"
+    for text in (hidden, hidden.replace(" ; ", " ")):
+        (own / "deck.cir").write_text("title\n" + BODY + text.replace("MARK", str(own / "mark")) + "\n.end\n")
+        review(own / "deck.cir", options=Options(engine="ngspice"))
+        assert not (own / "mark").exists()
+
+
+@pytest.mark.engine
+@pytest.mark.parametrize("quote", ["`touch${IFS}MARK`", "a;shell${IFS}touch${IFS}MARK", "a>MARK"])
+def test_a_name_is_no_command(quote: str, tmp_path: Path) -> None:
+    mark = tmp_path / "mark"
+    name = quote.replace("MARK", str(mark))
+    block = ".subckt blk i o\nr1 i n 10k\nr2 n o 100k\ne1 a 0 0 n 100k\nro a o 50\nrid n 0 1meg\n.ends\n"
+    deck = tmp_path / "deck.cir"
+    deck.write_text(f"title\n{block}v1 in 0 ac 1\nx{name} in out blk\nrl out 0 10k\n.ac dec 10 1 1k\n.end\n")
+    outcome = review(deck, options=Options(engine="ngspice"))
+    assert outcome.decks[0].evidence is not None
+    assert sorted(p.name for p in tmp_path.iterdir()) == ["deck.cir"]
+
+
+@pytest.mark.engine
+def test_a_name_would_be_a_command_to_ngspice_itself(tmp_path: Path) -> None:
+    mark = tmp_path / "mark"
+    lines = ["title", *BODY.strip().splitlines(), ".end"]
+    seen_by_raw_ngspice(tmp_path, lines, [f"save v(x`touch {mark}`)"])
+    assert mark.exists(), "the case above would prove nothing"

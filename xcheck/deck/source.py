@@ -7,7 +7,7 @@ from pathlib import Path
 
 MOST_BYTES = 64_000_000
 """Of all files of one deck; a deck beyond this is a mistake or an attack."""
-MOST_LINES = 150_000
+MOST_LINES = 100_000
 LONGEST_LINE = 100_000
 
 

@@ -30,8 +30,9 @@ def deviation(rule: Complex, analytic: Complex, neighbour: Complex | None) -> Re
 
 def holds_to(frequency: Real, rule: Complex, analytic: Complex, neighbour: Complex | None) -> dict[str, float | None]:
     """The frequency (Hz) from which the rule of thumb is off by 1 % and by 10 %, interpolated between grid points on
-    logarithmic axes; the lowest frequency of the grid where it is off from the start; None where it holds over the
-    whole grid or cannot be judged."""
+    logarithmic axes: where it first leaves the limit, having kept it; the lowest frequency of the grid where it
+    never keeps it. None where it holds to the end of the grid or cannot be judged.
+    """
     off = deviation(rule, analytic, neighbour)
     if off is None:
         return dict.fromkeys(LIMITS)
@@ -39,12 +40,16 @@ def holds_to(frequency: Real, rule: Complex, analytic: Complex, neighbour: Compl
 
 
 def _crossing(frequency: Real, off: Real, limit: float) -> float | None:
-    beyond = np.nonzero(off > limit)[0]
-    if not len(beyond):
+    within = off <= limit
+    if not np.any(within):
+        return float(frequency[0])
+    # a coupling capacitor puts the rule off at the low end too; it holds from there on
+    leaves = np.nonzero(within[:-1] & ~within[1:])[0]
+    if not len(leaves):
         return None
-    first = int(beyond[0])
-    if first == 0 or off[first - 1] <= 0:
-        return float(frequency[first])
-    low, high = np.log(off[first - 1]), np.log(off[first])
+    last = int(leaves[0])
+    if off[last] <= 0:
+        return float(frequency[last + 1])
+    low, high = np.log(off[last]), np.log(off[last + 1])
     share = (np.log(limit) - low) / (high - low)
-    return float(frequency[first - 1] * (frequency[first] / frequency[first - 1]) ** share)
+    return float(frequency[last] * (frequency[last + 1] / frequency[last]) ** share)

@@ -3,7 +3,7 @@
 import re
 from collections.abc import Iterator
 
-from xcheck.finding import Finding
+from xcheck.finding import Finding, Level
 from xcheck.notation import engineering
 from xcheck.place import Place
 from xcheck.reviewed import Evidence
@@ -46,13 +46,19 @@ def simulation_fails(evidence: Evidence) -> Iterator[Finding]:
     if simulation is None or not simulation.engine.available or simulation.failed_step in ("", OPERATING_POINT):
         return
     place, named = _named_in(evidence, (simulation.failure,))
+    measured, ports = len(simulation.values), len(evidence.answers)
+    # what was measured before, say, the time limit stands: that is no fault of the deck
+    level: Level = "note" if measured else "warning"
+    done = f"{measured} of {ports} impedances were simulated" if measured else "no impedance was simulated"
     yield Finding(
         "simulation-fails",
-        "warning",
+        level,
         place,
-        f"no impedance was simulated: ngspice failed ({simulation.failed_step}) and says: {_in_its_words(simulation)}",
+        f"{done}: ngspice failed ({simulation.failed_step}) and says: {_in_its_words(simulation)}",
         subject=named,
-        advice="the analytic values stand unchecked until ngspice can run this deck",
+        advice="the other analytic values stand unchecked"
+        if measured
+        else "the analytic values stand unchecked until ngspice can run this deck",
     )
 
 
