@@ -4,6 +4,7 @@ from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Literal
 
+from xcheck.circuit.trees import Node
 from xcheck.deck.cards import Card, Comment, Deck, Directive
 from xcheck.finding import Finding
 
@@ -13,10 +14,12 @@ GROUND = "0"
 @dataclass(frozen=True, slots=True)
 class Origin:
     """Where an element comes from: its card and the path of instances around it, outermost first
-    (('x1', 'x1.xu2') for `x1.xu2.r3`)."""
+    (('x1', 'x1.xu2') for `x1.xu2.r3`). device: the flat name of the device that the element is a part of, where it
+    stands for one at its operating point."""
 
     card: Card
     path: tuple[str, ...] = ()
+    device: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -88,9 +91,37 @@ class Controlled:
 
 
 @dataclass(frozen=True, slots=True)
+class Behaviour:
+    """What a behavioural element computes: a voltage 'v', a current 'i' from nodes[0] through it to nodes[1], or its
+    own value in ohm or farad ('r', 'c'). tree: with parameters and functions put in; `v` and `i` in it speak of flat
+    nodes and flat names of sources."""
+
+    gives: Literal["v", "i", "r", "c"]
+    tree: Node
+
+
+@dataclass(frozen=True, slots=True)
+class DeviceModel:
+    """A `.model` card as seen from a device: name, type ('npn', 'd', ...), and the parameters that are numbers."""
+
+    name: str
+    type: str
+    values: tuple[tuple[str, float], ...]
+    card: Card
+
+    def get(self, name: str, otherwise: float = 0.0) -> float:
+        """The value of a parameter."""
+        return next((value for key, value in self.values if key == name), otherwise)
+
+
+@dataclass(frozen=True, slots=True)
 class Device:
     """Anything the linear equations do not hold: D Q M J S W T A, and sources with nonlinear or frequency
-    dependent expressions. reason: a few words on why ('diode', 'expression', 'transmission line')."""
+    dependent expressions. reason: a few words on why ('diode', 'expression', 'transmission line').
+
+    behaviour: of a source, where its expression is known; definition: the model of a device that has one;
+    parameters: the instance's own, as numbers ('area', 'w', ...); control: flat name of the source whose current
+    a W switch reads."""
 
     name: str
     kind: str
@@ -99,6 +130,10 @@ class Device:
     model: str
     reason: str
     origin: Origin
+    behaviour: Behaviour | None = None
+    definition: DeviceModel | None = None
+    parameters: tuple[tuple[str, float], ...] = ()
+    control: str = ""
 
 
 Element = Passive | Coupling | Source | Controlled | Device

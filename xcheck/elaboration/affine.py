@@ -2,15 +2,8 @@
 
 from dataclasses import dataclass, field
 
-from xcheck.elaboration.expressions import (
-    Binary,
-    Call,
-    Evaluator,
-    ExpressionError,
-    Name,
-    Node,
-    Unary,
-)
+from xcheck.circuit.trees import Binary, Call, Name, Node, Unary
+from xcheck.elaboration.expressions import Evaluator, ExpressionError
 
 Probe = tuple[str, tuple[str, ...]]
 """('v', (node,)), ('v', (node, node)) or ('i', (source,))."""

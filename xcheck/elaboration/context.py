@@ -4,10 +4,11 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 from xcheck.circuit.elements import GROUND
+from xcheck.circuit.trees import Node
 from xcheck.deck.cards import Card, Field
 from xcheck.deck.numbers import read_number
 from xcheck.elaboration.definitions import Body
-from xcheck.elaboration.expressions import ExpressionError, Node, parse
+from xcheck.elaboration.expressions import ExpressionError, parse
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.scopes import Scope
 from xcheck.elaboration.words import braced
@@ -82,6 +83,15 @@ class Amount:
             return context.scope.evaluator().value(self.tree)
         except ExpressionError as error:
             context.problems.expression(error, self.card, self.field, context.scope.names())
+            return None
+
+    def quiet(self, context: Context) -> float | None:
+        """The value in a context, None where it has none; without a finding."""
+        if self.constant is not None or self.tree is None:
+            return self.constant
+        try:
+            return context.scope.evaluator().value(self.tree)
+        except ExpressionError:
             return None
 
 

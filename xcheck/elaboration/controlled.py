@@ -3,13 +3,15 @@
 import re
 from typing import Literal
 
-from xcheck.circuit.elements import Controlled, Device, Element, Origin, Term
+from xcheck.circuit.elements import Behaviour, Controlled, Device, Element, Origin, Term
+from xcheck.circuit.trees import Call, Node
 from xcheck.deck.cards import Card, Field
 from xcheck.elaboration.affine import Linear, Probe, depends_on_time, linear_form, probes_in
 from xcheck.elaboration.context import Amount, Context, is_value
 from xcheck.elaboration.expressions import ExpressionError
 from xcheck.elaboration.passives import Maker
 from xcheck.elaboration.problems import Problems
+from xcheck.elaboration.resolution import polynomial, resolved
 from xcheck.elaboration.words import opened, words_of
 
 _POLY = re.compile(r"poly\s*(?:\(\s*(\d+)\s*\))?$")
@@ -93,12 +95,21 @@ def _poly(card: Card, kind: Kind, fields: tuple[Field, ...], dimension: str | No
         if count == 1 and len(numbers) == 1:
             numbers.insert(0, 0.0)  # a single coefficient of a one-input POLY is its gain, not its constant
         if any(numbers[count + 1 :]):
-            return Device(name, kind, ends, sensing, "", "polynomial of higher degree", origin)
+            inputs = [_probe(controls[width * k : width * (k + 1)], context) for k in range(count)]
+            behaviour = Behaviour("v" if kind in "eh" else "i", polynomial(numbers, inputs))
+            return Device(name, kind, ends, sensing, "", "polynomial of higher degree", origin, behaviour)
         gains = numbers[1 : count + 1]
         terms = [_term(gain, controls[width * k : width * (k + 1)], context) for k, gain in enumerate(gains) if gain]
         return Controlled(name, kind, ends, tuple(terms), numbers[0], origin)
 
     return make
+
+
+def _probe(words: tuple[Field, ...], context: Context) -> Node:
+    """A voltage between two nodes, or the current through a source, as part of a tree."""
+    if len(words) == 1:
+        return Call("i", (), (context.prefix + words[0].key,), words[0].start, words[0].end)
+    return Call("v", (), tuple(context.node(w.key) for w in words), words[0].start, words[-1].end)
 
 
 def behavioural(card: Card, problems: Problems) -> Maker | None:
@@ -128,14 +139,15 @@ def _expression(card: Card, field: Field, kind: Kind) -> Maker:
         sensing = tuple(dict.fromkeys(context.node(n) for letter, ns in probes if letter == "v" for n in ns))
         try:
             form = None if depends_on_time(amount.tree) else linear_form(amount.tree, context.scope.evaluator())
+            if form is not None:
+                return _from_form(name, kind, ends, form, context, origin)
+            behaviour = Behaviour("v" if kind in "eh" else "i", resolved(amount.tree, context))
         except ExpressionError as error:
             if not error.unknown:
                 return Device(name, card.kind, ends, sensing, "", "expression", origin)
             context.problems.expression(error, card, field, context.scope.names())
             return Device(name, card.kind, ends, sensing, "", "value unknown", origin)
-        if form is None:
-            return Device(name, card.kind, ends, sensing, "", "expression", origin)
-        return _from_form(name, kind, ends, form, context, origin)
+        return Device(name, card.kind, ends, sensing, "", "expression", origin, behaviour)
 
     return make
 

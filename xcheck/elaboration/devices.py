@@ -2,9 +2,10 @@
 
 from collections.abc import Mapping
 
-from xcheck.circuit.elements import Device, Element, Origin
+from xcheck.circuit.elements import Device, DeviceModel, Element, Origin
 from xcheck.deck.cards import Card, Field
-from xcheck.elaboration.context import Context
+from xcheck.deck.fields import fields_of
+from xcheck.elaboration.context import Amount, Context, is_value
 from xcheck.elaboration.passives import Maker
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.words import words_of
@@ -35,13 +36,25 @@ def device(card: Card, problems: Problems) -> Maker | None:
         problems.say("syntax", "error", card, None, f"`{card.text[:60]}`: {wanted} are wanted")
         return None
 
+    pairs = {key: Amount(card, value) for key, value in words_of(card).pairs.items()}
+    models: dict[int, dict[str, Amount]] = {}
+
     def make(context: Context) -> Element | None:
         words, model = _nodes_and_model(card, plain, fewest, most, has_model, context)
         nodes = tuple(context.node(f.key) for f in words)
         inner = nodes[: len(nodes) - sensing] if sensing else nodes
         name = model.key if model is not None else ""
         felt = nodes[len(nodes) - sensing :] if sensing else ()
-        return Device(context.name(card), card.kind, inner, felt, name, reason, Origin(card, context.path))
+        own = [(key, amount.at(context)) for key, amount in pairs.items() if key != "ic"]
+        behind = plain[len(words) + (card.kind == "w") + 1 :]
+        if card.kind in "dqjz" and behind and is_value(behind[0]):  # the area, without a key
+            own.insert(0, ("area", Amount(card, behind[0]).at(context)))
+        control = context.prefix + plain[2].key if card.kind == "w" else ""
+        return Device(
+            context.name(card), card.kind, inner, felt, name, reason, Origin(card, context.path),
+            definition=_definition(name, context, models) if has_model else None,
+            parameters=tuple((key, value) for key, value in own if value is not None), control=control,
+        )  # fmt: skip
 
     return make
 
@@ -59,6 +72,37 @@ def _nodes_and_model(
     field = plain[fewest + extra] if len(plain) > fewest + extra else plain[-1]
     context.problems.unknown_model(card, field, context.model_names(), "model")
     return plain[:fewest], field
+
+
+def _definition(name: str, context: Context, models: dict[int, dict[str, Amount]]) -> DeviceModel | None:
+    """The model that a name stands for, with its parameters evaluated where it is used; None where there is none.
+    models: the parameters of model cards read before, by the card's identity."""
+    card = context.model(name)
+    if card is None or len(card.fields) < 3:
+        return None
+    if id(card) not in models:
+        models[id(card)] = {key: Amount(card, value) for key, value in model_words(card).items()}
+    values = ((key, amount.quiet(context)) for key, amount in models[id(card)].items())
+    kind = card.fields[2].key.split("(")[0]
+    return DeviceModel(name, kind, tuple((key, value) for key, value in values if value is not None), card)
+
+
+def model_words(card: Card) -> dict[str, Field]:
+    """The parameters of a model card by name; they may stand in parentheses."""
+    opened = []
+    for field in card.fields:
+        head, parenthesis, _ = field.text.partition("(")
+        start = field.start + len(head) + 1
+        if parenthesis and field.text.endswith(")") and (not head or head.isalnum()):
+            inner = fields_of(field.text[len(head) + 1 : -1])
+            opened += [Field(f.text, f.start + start, f.end + start) for f in inner]
+        else:
+            opened.append(field)
+    found: dict[str, Field] = {}
+    for index, field in enumerate(opened[1:-1], 1):
+        if field.text == "=":
+            found[opened[index - 1].key] = opened[index + 1]
+    return found
 
 
 def _binned(name: str, context: Context) -> bool:

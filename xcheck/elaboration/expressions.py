@@ -9,6 +9,7 @@ import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
+from xcheck.circuit.trees import Binary, Call, Choice, Constant, Name, Node, Unary
 from xcheck.deck.numbers import read_number
 
 DEEPEST = 60
@@ -23,51 +24,6 @@ class ExpressionError(Exception):
         super().__init__(message)
         self.start, self.end, self.unknown, self.function = start, end, unknown, function
 
-
-@dataclass(frozen=True, slots=True)
-class Constant:
-    value: float
-
-
-@dataclass(frozen=True, slots=True)
-class Name:
-    name: str
-    start: int
-    end: int
-
-
-@dataclass(frozen=True, slots=True)
-class Call:
-    """A function, or `v`/`i` of nodes and sources, whose arguments are then the words themselves."""
-
-    function: str
-    arguments: tuple["Node", ...]
-    words: tuple[str, ...]
-    start: int
-    end: int
-
-
-@dataclass(frozen=True, slots=True)
-class Unary:
-    operator: str
-    operand: "Node"
-
-
-@dataclass(frozen=True, slots=True)
-class Binary:
-    operator: str
-    left: "Node"
-    right: "Node"
-
-
-@dataclass(frozen=True, slots=True)
-class Choice:
-    condition: "Node"
-    yes: "Node"
-    no: "Node"
-
-
-Node = Constant | Name | Call | Unary | Binary | Choice
 
 _TOKEN = re.compile(
     r"\s*(?:(?P<number>(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?[a-zA-Zµ]*)"

@@ -3,11 +3,13 @@
 from collections.abc import Callable
 from typing import Literal
 
-from xcheck.circuit.elements import Coupling, Device, Element, Origin, Passive
+from xcheck.circuit.elements import Behaviour, Coupling, Device, Element, Origin, Passive
 from xcheck.deck.cards import Card, Field
 from xcheck.elaboration.affine import probes_in
 from xcheck.elaboration.context import Amount, Context, is_value
+from xcheck.elaboration.expressions import ExpressionError
 from xcheck.elaboration.problems import Problems
+from xcheck.elaboration.resolution import resolved
 from xcheck.elaboration.words import Words, words_of
 
 Maker = Callable[[Context], Element | None]
@@ -39,7 +41,7 @@ def passive(card: Card, problems: Problems) -> Maker | None:
             return _by_model(card, kind, rest, ends, context)
         if amount.tree is not None and (probes := probes_in(amount.tree)):
             sensing = tuple(context.node(n) for letter, ns in probes if letter == "v" for n in ns)
-            return Device(name, kind, ends, sensing, "", "expression", origin)
+            return Device(name, kind, ends, sensing, "", "expression", origin, _behaviour(kind, amount, context))
         ohms = amount.at(context)
         if ohms is None:
             return Device(name, kind, ends, (), "", "value unknown", origin)
@@ -52,6 +54,16 @@ def passive(card: Card, problems: Problems) -> Maker | None:
         return Passive(name, kind, ends, ohms, origin)
 
     return make
+
+
+def _behaviour(kind: str, amount: Amount, context: Context) -> Behaviour | None:
+    """What a behavioural resistor or capacitor computes, None where its expression cannot be resolved."""
+    try:
+        if amount.tree is not None and kind in "rc":
+            return Behaviour("r" if kind == "r" else "c", resolved(amount.tree, context))
+    except ExpressionError as error:
+        context.problems.expression(error, amount.card, amount.field, context.scope.names())
+    return None
 
 
 def _value_field(kind: str, rest: tuple[Field, ...], words: Words) -> Field | None:

@@ -5,14 +5,9 @@ A name that a subcircuit does not know is looked for where the subcircuit was ca
 
 from collections.abc import Mapping
 
+from xcheck.circuit.trees import Node
 from xcheck.deck.cards import Card, Field
-from xcheck.elaboration.expressions import (
-    Evaluator,
-    ExpressionError,
-    Function,
-    Node,
-    parse,
-)
+from xcheck.elaboration.expressions import Evaluator, ExpressionError, Function, parse
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.words import braced
 
