@@ -13,7 +13,7 @@ MODULES = {
     for path in sorted(PACKAGE.rglob("*.py"))
 }
 FLOW = """
-    version errors place finding options notation deck circuit elaboration stages topologies impedance
+    version errors place finding options notation deck circuit elaboration linearisation stages topologies impedance
     simulate frame reviewed rules report directives grid reviewing cli __main__
 """
 ORDER = tuple(FLOW.split())

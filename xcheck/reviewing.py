@@ -4,6 +4,7 @@ from collections.abc import Callable, Iterable
 from dataclasses import replace
 from pathlib import Path
 
+from xcheck.circuit.elements import Circuit, Device
 from xcheck.deck.cards import Deck
 from xcheck.deck.reader import read_deck
 from xcheck.directives import band_of
@@ -14,10 +15,12 @@ from xcheck.grid import DEFAULT_BAND, comparison_grid
 from xcheck.impedance.answers import answer_ports
 from xcheck.impedance.closed_form import closed_forms
 from xcheck.impedance.return_ratio import return_ratios
+from xcheck.linearisation import Linearised, linearise
 from xcheck.options import Options
 from xcheck.reviewed import DeckReview, Evidence, Outcome
 from xcheck.rules import run_rules
 from xcheck.simulate import find_engine, measure
+from xcheck.simulate.operate import QUANTITIES, Operated, operate
 from xcheck.simulate.types import EngineInfo
 from xcheck.stages import find_amplifiers, split
 from xcheck.topologies import classify
@@ -85,11 +88,13 @@ def analyse(
 ) -> tuple[Evidence, tuple[Finding, ...]]:
     """All that can be known of one deck, and what the rules say of it, in order of place."""
     circuit = elaborate(deck, options.subckt)
+    operated = _operated(deck, circuit, engine)
+    linear = linearise(circuit, operated.point) if operated.point is not None else Linearised(circuit)
     declared, refusals = band_of(deck.directives)
     band = options.band or declared
     in_band = band or DEFAULT_BAND
-    amplifiers, amplifier_findings = find_amplifiers(circuit)
-    partition = split(circuit, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
+    amplifiers, amplifier_findings = find_amplifiers(linear.circuit)
+    partition = split(linear.circuit, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
     frequency = comparison_grid(circuit.analyses, options.spots)
     recognised = {stage.name: classify(partition, stage, band=in_band) for stage in partition.stages}
     roads = return_ratios(partition, frequency)
@@ -126,6 +131,14 @@ def analyse(
     )
     findings = (*deck.findings, *circuit.findings, *refusals, *partition.findings, *run_rules(evidence))
     return evidence, _in_order(findings)
+
+
+def _operated(deck: Deck, circuit: Circuit, engine: EngineInfo) -> Operated:
+    """The operating point, asked for only where there is something nonlinear that has an equivalent at it."""
+    devices = [e for e in circuit.elements if isinstance(e, Device)]
+    if engine.available and any(d.behaviour is not None or d.kind in QUANTITIES for d in devices):
+        return operate(deck, circuit, engine=engine)
+    return Operated(None)
 
 
 def _in_order(findings: Iterable[Finding]) -> tuple[Finding, ...]:

@@ -2,13 +2,13 @@
 
 import math
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
 
 from xcheck.circuit.arrays import Complex, Real
-from xcheck.circuit.elements import Circuit
+from xcheck.circuit.elements import Circuit, Device
 from xcheck.deck.cards import Card, Deck
 from xcheck.simulate.cuts import Cut, CutWriter, NoCut, Taken, Terminals
 from xcheck.simulate.engine import find_engine
@@ -19,7 +19,7 @@ from xcheck.simulate.size import MOST_ELEMENTS, expanded_size
 from xcheck.simulate.sweeps import Sweeps, sweeps_of
 from xcheck.simulate.types import EngineInfo, Simulation
 from xcheck.simulate.written import blocks_of, deck_lines, reviewed_block, unused_mark
-from xcheck.stages.types import Partition, Port
+from xcheck.stages.types import Partition, Port, Terminal
 
 TIME_LIMIT = 120.0
 """Seconds of wall time for all ports of a deck."""
@@ -56,12 +56,13 @@ def measure(
     engine = find_engine() if engine is None else engine
     ports = {port.subject: port for stage in partition.stages for port in stage.ports}
     sane = harmless(deck.cards, deck.after_end)
-    fault = engine.reason if not engine.available else _why_not(sane, circuit)
+    fault = engine.reason if not engine.available else why_not(sane, circuit)
     if fault:
         return Simulation(
             engine, unmeasured=dict.fromkeys(ports, fault), failure=fault, failed_step="load", left_out=sane.left_out
         )
-    plan = planned(sane.cards, circuit, partition, ports)
+    written = {subject: as_written(port, circuit, partition.circuit) for subject, port in ports.items()}
+    plan = planned(sane.cards, circuit, partition, written)
     sweeps = sweeps_of(frequency)
     first = float(frequency[0])
     job = {
@@ -77,7 +78,26 @@ def measure(
     return found.simulation(engine, frequency, sweeps, ports, sane.left_out)
 
 
-def _why_not(sane: Harmless, circuit: Circuit) -> str:
+def as_written(port: Port, circuit: Circuit, linear: Circuit) -> Port:
+    """A port whose side of the stage is made of elements of the deck: for what stands for a device at its operating
+    point, the device's own terminals on the port's node."""
+    inside: dict[Terminal, None] = {}
+    for terminal in port.inside:
+        element = linear.by_name.get(terminal.element)
+        device = circuit.by_name.get(element.origin.device) if element is not None else None
+        if device is None:
+            original = circuit.by_name.get(terminal.element)
+            known = isinstance(original, Device) and terminal.index < 0 and port.node not in original.sensing
+            if not known:  # a behavioural resistor senses its own ends once it is linear
+                inside[terminal] = None
+            continue
+        inside.update((Terminal(device.name, k), None) for k, node in enumerate(device.nodes) if node == port.node)
+        if port.node in getattr(device, "sensing", ()):
+            inside[Terminal(device.name, -1)] = None
+    return replace(port, inside=tuple(inside))
+
+
+def why_not(sane: Harmless, circuit: Circuit) -> str:
     """Why a deck is not handed to ngspice at all, '' where it is."""
     used = {id(e.origin.card) for e in circuit.elements}
     missing = [card for card in sane.refused if id(card) in used]

@@ -16,3 +16,13 @@ def of_another_kind(device: str, letter: str) -> str:
     letter."""
     *around, own = device.split(".")
     return ".".join((*(letter if part == own[:1] else part for part in around), letter + own[1:]))
+
+
+def engine_names(flat: str, letter: str) -> tuple[str, ...]:
+    """What ngspice may call a device of the flat circuit: the likelier name first."""
+    *around, own = flat.split(".")
+    if not around:
+        return (flat,)
+    plain = ".".join((letter, *around, own))
+    nested = ".".join((*(word for part in around for word in (letter, part)), own))
+    return (plain,) if nested == plain else (plain, nested)

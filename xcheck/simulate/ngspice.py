@@ -49,8 +49,8 @@ class Ngspice:
         return self._said()
 
     def _said(self) -> list[str]:
-        """Lines on standard error, and those on standard output that speak of an error."""
-        told = [line for line in self._shared._stdout if re.search("error|warning", line, re.IGNORECASE)]
+        """Lines on standard error, and those on standard output that speak of an error or of a transient run."""
+        told = [line for line in self._shared._stdout if re.search("error|warning|transient op", line, re.IGNORECASE)]
         return [str(line).strip() for line in (*told, *self._shared._stderr) if str(line).strip()]
 
     def vectors(self, kind: str) -> dict[str, Complex]:
@@ -62,6 +62,14 @@ class Ngspice:
         if not plots:
             return {}
         return {_node(str(name).lower()): vector._data for name, vector in self._shared.plot(None, plots[0]).items()}
+
+    def value(self, name: str) -> float | None:
+        """A quantity of a device by ngspice's name for it (`@q.x1.q2[gm]`), None where there is none."""
+        self._shared.clear_output()
+        info = self._library.ngGet_Vec_Info(name.encode("utf-8", "replace"))
+        if info == ffi.NULL or info.v_length < 1 or info.v_realdata == ffi.NULL:
+            return None
+        return float(info.v_realdata[0])
 
 
 def _node(name: str) -> str:

@@ -4,7 +4,7 @@ import re
 from collections.abc import Iterable
 
 _STEPS = re.compile(
-    r"trying gmin|note: (starting|one successful|no compatibility|codel model)|supplies reduced|"
+    r"trying gmin|note: (transient op|starting|one successful|no compatibility|codel model)|supplies reduced|"
     r"warning: (further gmin|last gmin)|doing analysis|no\. of data rows|reference value|circuit:|"
     r"reducing trtol|preparing expression|initial transient|last node voltages|-{6,}|node +(last )?voltage|----|"
     r"please check your input|error: ngspice\.dll cannot recover|dc solution failed -|ac operating point failed -",
@@ -32,6 +32,11 @@ def quoted(lines: Iterable[str], otherwise: str) -> str:
 def refused(lines: Iterable[str]) -> bool:
     """Whether ngspice said that it did not carry out an analysis."""
     return any(re.search(r"aborted|analysis not run|no such device", line, re.IGNORECASE) for line in lines)
+
+
+def by_transient(lines: Iterable[str]) -> bool:
+    """Whether ngspice said that it found the operating point by a transient run."""
+    return any("transient op finished" in line.lower() for line in lines)
 
 
 def not_loaded(lines: Iterable[str]) -> bool:

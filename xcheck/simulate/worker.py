@@ -10,6 +10,7 @@ them. Run as `python -m xcheck.simulate.worker`.
 import json
 import logging
 import os
+import re
 import resource
 import sys
 import warnings
@@ -20,12 +21,15 @@ import numpy as np
 
 from xcheck.simulate.names import circuit_name, of_another_kind
 from xcheck.simulate.ngspice import Ngspice, NoCommand
-from xcheck.simulate.words import not_loaded, out_of_memory, quoted, refused, telling
+from xcheck.simulate.words import by_transient, not_loaded, out_of_memory, quoted, refused, telling
 
 Send = Callable[..., None]
 
 POLY_PROBE = ("poly", "v1 1 0 1", "e1 2 0 poly(1) 1 0 0 1", "r1 2 0 1", ".end")
 MOST_MESSAGES = 50
+TRANSIENT_ALONE = (
+    "ngspice finds the operating point by a transient run alone, and after that its small-signal values are wrong"
+)
 
 
 class Refused(Exception):
@@ -77,7 +81,24 @@ class Measuring:
         self.sources: dict[str, str] = {}
 
     def load(self, lines: list[str], first: bool) -> None:
-        """Loads the deck and finds its operating point, which is told once. Raises Refused."""
+        """Loads the deck and finds its operating point, which is told once. Raises Refused.
+
+        Where ngspice 39 gets there by a transient run alone, the conductances of junctions with charge still hold that
+        run's share, and every small-signal result is wrong (seen with diodes and JFETs). Started at the voltages found,
+        it gets there directly."""
+        numbers, words = self._operating_point(lines)
+        if by_transient(words):
+            self.engine.command("remcirc")
+            numbers, words = self._operating_point([*lines[:-1], *_starting_at(numbers), lines[-1]])
+            if by_transient(words):
+                raise Refused("operating point", TRANSIENT_ALONE)
+        branches = [name.removesuffix("#branch") for name in numbers if name.endswith("#branch")]
+        self.sources = {circuit_name(device): device for device in branches}
+        if first:
+            self.send(event="operating point", values=numbers)
+
+    def _operating_point(self, lines: list[str]) -> tuple[dict[str, float], list[str]]:
+        """The vectors of an operating point, and what ngspice said on the way. Raises Refused."""
         taken, said = self.engine.load(lines)
         self.messages |= dict.fromkeys(telling(said))
         if not taken:
@@ -90,10 +111,23 @@ class Measuring:
         numbers = {name: float(data[0].real) for name, data in values.items() if len(data)}
         if refused(words) or not numbers or not all(map(np.isfinite, numbers.values())):
             raise _refusal("operating point", words, "ngspice found no operating point")
-        branches = [name.removesuffix("#branch") for name in numbers if name.endswith("#branch")]
-        self.sources = {circuit_name(device): device for device in branches}
-        if first:
-            self.send(event="operating point", values=numbers)
+        return numbers, words
+
+    def devices(self, wanted: Sequence[dict[str, Any]]) -> None:
+        """Tells the small-signal values of devices at the operating point. names: what ngspice may call the device."""
+        # charges become capacitances only where a small-signal analysis has been at work
+        words = self.engine.command(self.glance)
+        if refused(words):
+            raise _refusal("ac", words, "ngspice gave no result")
+        found: dict[str, dict[str, float]] = {}
+        for device in wanted:
+            for name in device["names"]:
+                values = {q: self.engine.value(f"@{name}[{q}]") for q in device["quantities"]}
+                known = {q: v for q, v in values.items() if v is not None and np.isfinite(v)}
+                if known:
+                    found[device["device"]] = known
+                    break
+        self.send(event="devices", values=found)
 
     def silence(self) -> None:
         """Makes sure that nothing answers at AC while no test signal is alive. Raises Refused."""
@@ -147,6 +181,12 @@ class Measuring:
         return {key: np.concatenate(parts).astype(np.complex128) for key, parts in found.items()}
 
 
+def _starting_at(numbers: dict[str, float]) -> list[str]:
+    """Cards that start the search at some voltages; names that the card does not take are left out."""
+    plain = {name: volt for name, volt in numbers.items() if re.fullmatch(r"[a-z0-9_.]+", name)}
+    return [f".nodeset v({name})={volt!r}" for name, volt in plain.items()]
+
+
 def _refusal(step: str, said: Sequence[str], otherwise: str) -> Refused:
     return Refused("memory limit" if out_of_memory(said) else step, quoted(said, otherwise))
 
@@ -163,12 +203,14 @@ def run(job: dict[str, Any], send: Send) -> None:
     if job["task"] == "probe":
         probe(engine, send)
         return
-    measuring = Measuring(engine, job["sweeps"], job["glance"], send)
+    measuring = Measuring(engine, job.get("sweeps", ()), job["glance"], send)
     try:
         for number, load in enumerate(job["loads"]):
             if number:
                 engine.command("remcirc")
             measuring.load(load["lines"], first=not number)
+            if load.get("devices"):
+                measuring.devices(load["devices"])
             if load["ports"]:
                 measuring.silence()
             for port in load["ports"]:

@@ -15,7 +15,8 @@ OPEN_AT_AC = 1e18
 """Henry: keeps an open pin's DC level at ground and lets nothing through at any frequency of interest."""
 PIVOTING = ".options pivrel=0.1"
 """How small a pivot may be beside the others of its column; a deck's own wish counts. With ngspice's 0.001, 5.7 MOhm
-behind a follower came out 2e-7 off at 2 Hz, with this 2e-12; it costs a tenth of the time."""
+behind a follower came out 2e-7 off at 2 Hz, with this 2e-12; it costs a tenth of the time. Nonlinear decks are without
+it: the search for an operating point fails more often with it."""
 _PLAIN = Variant("", Need())
 
 
@@ -64,10 +65,13 @@ def reviewed_block(circuit: Circuit, top: Block) -> Block | None:
     return None
 
 
-def deck_lines(top: Block, block: Block | None, writer: CutWriter, circuit: Circuit, partition: Partition) -> list[str]:
-    """The lines of one load. Raises NoCut where a subcircuit's text cannot be copied."""
+def deck_lines(
+    top: Block, block: Block | None, writer: CutWriter, circuit: Circuit, partition: Partition | None
+) -> list[str]:
+    """The lines of one load; partition None: before the circuit is split. Raises NoCut where a subcircuit's text cannot
+    be copied."""
     texts = variants_of(writer.needs, writer.terminals.instances, writer.mark)
-    lines = [TITLE, *_pivoting(circuit.deck.cards)]
+    lines = [TITLE, *_pivoting(circuit)]
     if writer.globals:
         lines.append(f".global {' '.join(writer.globals)}")
     if block is None or block.opening is None:
@@ -79,12 +83,15 @@ def deck_lines(top: Block, block: Block | None, writer: CutWriter, circuit: Circ
         lines += _body(settings, _PLAIN, texts)
         pins = circuit.boundary
         lines.append(f"{writer.root} {' '.join(pins)} {block.opening.fields[1].text}")
-    lines += _ties(circuit, partition, writer)
+    if partition is not None:
+        lines += _ties(circuit, partition, writer)
     return [*lines, ".end"]
 
 
-def _pivoting(cards: Sequence[Card]) -> list[str]:
-    said = any(field.key == "pivrel" for card in cards if is_options(card) for field in card.fields)
+def _pivoting(circuit: Circuit) -> list[str]:
+    if any(isinstance(e, Device) for e in circuit.elements):
+        return []
+    said = any(field.key == "pivrel" for card in circuit.deck.cards if is_options(card) for field in card.fields)
     return [] if said else [PIVOTING]
 
 

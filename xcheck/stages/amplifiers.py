@@ -91,8 +91,7 @@ class _Search:
         source = "comment" if by_comment else "pin names"
         seen = self._seen(instance, named)
         if told is None and seen is None:
-            devices = self._devices(instance)
-            if not named or not devices or not _looks_like_an_amplifier(devices, instance.local):
+            if not named or not _is_nonlinear(instance) or not _looks_like_an_amplifier(instance.local):
                 return None
             if inner and not _is_wrapper(instance, inner[0], self.members):
                 return None
@@ -202,10 +201,16 @@ def _follows(source: Controlled) -> bool:
     return sum(abs(t.gain) for t in source.terms) <= LEAST_NAMED_GAIN
 
 
-def _looks_like_an_amplifier(devices: Sequence[Device], elements: Sequence[Element]) -> bool:
+def _is_nonlinear(instance: Instance) -> bool:
+    """Whether an instance holds devices, or what stands for them at the operating point."""
+    return any(isinstance(e, Device) or e.origin.device for e in instance.local)
+
+
+def _looks_like_an_amplifier(elements: Sequence[Element]) -> bool:
     """Whether a nonlinear subcircuit has what an op-amp model needs: active parts beyond diodes."""
-    active = any(d.kind in "qmjz" or d.sensing for d in devices)
-    return active or any(isinstance(e, Controlled) for e in elements)
+    return any(
+        isinstance(e, Controlled) or (isinstance(e, Device) and (e.kind in "qmjz" or e.sensing)) for e in elements
+    )
 
 
 def _is_wrapper(instance: Instance, inner: Amplifier, members: Mapping[str, Sequence[Element]]) -> bool:

@@ -68,7 +68,8 @@ class Surroundings:
             for node in element.nodes:
                 made.ends.setdefault(node, []).append(element)
             moving = [n for n in element.nodes if n not in still]
-            if isinstance(element, Controlled) and element.kind in "eg" and all(not t.source for t in element.terms):
+            readable = isinstance(element, Controlled) and all(not t.source for t in element.terms)
+            if isinstance(element, Controlled) and readable and element.kind in "eg" and not element.origin.device:
                 made.sources.append(element)
                 for node in element.sensing:
                     made.senses.setdefault(node, []).append(element)
@@ -77,6 +78,8 @@ class Surroundings:
                 if len(moving) == 1 and any(n in still and n not in quiet for n in element.nodes):
                     made.busy.update(moving)
             elif not (isinstance(element, Source) and element.kind == "v" and not moving):
+                made.busy.update(element.nodes, sensing)
+            if element.origin.device:  # what stands for a device belongs to no op-amp of controlled sources
                 made.busy.update(element.nodes, sensing)
         return made
 

@@ -23,8 +23,9 @@ BESIDE = 0.1
 STRAY_FARAD = 5e-12
 """A capacitor up to this from the output back to an input is a parasitic of the part, not a feedback network."""
 
-MOST_ELEMENTS = 400
-"""A linear op-amp model has tens of elements; a block with more is a board, and its dense equations too large."""
+MOST_ELEMENTS = 1500
+"""A linear op-amp model has tens of elements, a transistor-level one hundreds at its operating point; a block with more
+is a board, and its dense equations too large."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -86,10 +87,16 @@ def _driven_pins(elements: Sequence[Element], pins: Sequence[str]) -> list[str]:
 
 
 def _has_feedback(elements: Sequence[Element], pins: Sequence[str], inputs: Sequence[str], output: str) -> bool:
-    """Whether the elements close a loop around the sources that sense the inputs, or tie output and input."""
+    """Whether the elements close a loop around the sources that sense the inputs, or tie output and input.
+
+    Transistors have loops around them everywhere, down to 1 pS; there only what the author wrote as passives, from
+    the output to an input, is feedback."""
     held = [p for p in pins if p != output]
+    passives = [e for e in elements if isinstance(e, Passive) and not e.origin.device]
+    if any(e.origin.device for e in elements):
+        others = [p for p in held if p not in inputs]
+        return bool(reach([output], influence(passives, others, _counts)) & set(inputs))
     edges = influence(elements, held, _counts)
-    passives = [e for e in elements if isinstance(e, Passive)]
     zone = {*inputs, *reach(inputs, influence(passives, held, _counts))}
     for source in elements:
         if isinstance(source, Controlled) and zone & set(source.sensing):
