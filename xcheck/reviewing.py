@@ -93,7 +93,7 @@ def analyse(
     declared, refusals = band_of(deck.directives)
     band = options.band or declared
     in_band = band or DEFAULT_BAND
-    amplifiers, amplifier_findings = find_amplifiers(linear.circuit)
+    amplifiers, amplifier_findings = find_amplifiers(linear.circuit, circuit)
     partition = split(linear.circuit, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
     frequency = comparison_grid(circuit.analyses, options.spots)
     recognised = {stage.name: classify(partition, stage, band=in_band) for stage in partition.stages}

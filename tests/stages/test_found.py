@@ -98,7 +98,8 @@ def test_a_nonlinear_model_is_found_by_its_pin_names_and_a_directive_overrules()
     assert amplifier.open_loop.model is None
     assert (amplifier.inverting, amplifier.positive_supply) == ("n", "vp")
     nameless = model.replace("inp inn vcc vee out", "a b c d e").replace("inp,inn", "a,b").replace("x out", "x e")
-    assert found(nameless + STAGE + "xu1 0 n vp vn out mac") == ()
+    (amplifier,) = found(nameless + STAGE + "xu1 0 n vp vn out mac")
+    assert (amplifier.inverting, amplifier.output) == ("n", "out")
     told = "* xcheck: amplifier xu1 in+=a in-=b out=e v+=c v-=d\n"
     (amplifier,) = found(told + nameless + STAGE + "xu1 0 n vp vn out mac")
     assert (amplifier.inverting, amplifier.output, amplifier.negative_supply) == ("n", "out", "vn")

@@ -80,11 +80,11 @@ COMPARED: Mapping[str, Callable[[float, float], bool]] = {
 }  # fmt: skip
 
 
-def slope_of(tree: Node, probed: Callable[[Probe], float]) -> Slope:
+def slope_of(tree: Node, probed: Callable[[Probe], float], *, all_branches: bool = False) -> Slope:
     """The value of a resolved expression and its derivatives, at DC (time 0). probed: volt or ampere of a probe.
-    Raises NoSlope."""
+    all_branches: where one of several branches would be taken, the mean of them all. Raises NoSlope."""
     try:
-        found = _slope(tree, probed)
+        found = _Slopes(probed, all_branches).of(tree)
     except (ValueError, OverflowError, ZeroDivisionError) as error:
         raise NoSlope(f"it has no value at the operating point ({error})") from error
     except KeyError as missing:
@@ -94,27 +94,58 @@ def slope_of(tree: Node, probed: Callable[[Probe], float]) -> Slope:
     return found
 
 
-def _slope(tree: Node, probed: Callable[[Probe], float]) -> Slope:
-    match tree:
-        case Constant(value):
-            return Slope(value)
-        case Name(name):
-            if name == "time":
-                return Slope(0.0)
-            raise NoSlope(f"it depends on {name}")
-        case Unary(operator, operand):
-            inner = _slope(operand, probed)
-            return inner.through(-inner.value, -1.0) if operator == "-" else Slope(float(not inner.value))
-        case Choice(condition, yes, no):
-            return _slope(yes if _slope(condition, probed).value else no, probed)
-        case Binary(operator, left, right):
-            return _binary(operator, _slope(left, probed), _slope(right, probed))
-        case Call(function, _, words) if words:
-            probe = (function, words)
-            return Slope(probed(probe), {probe: 1.0})
-        case Call(function, arguments):
-            return _call(function, [_slope(argument, probed) for argument in arguments])
-    raise NoSlope("it is no expression")
+@dataclass(frozen=True)
+class _Slopes:
+    probed: Callable[[Probe], float]
+    all_branches: bool
+
+    def of(self, tree: Node) -> Slope:
+        match tree:
+            case Constant(value):
+                return Slope(value)
+            case Name(name):
+                if name == "time":
+                    return Slope(0.0)
+                raise NoSlope(f"it depends on {name}")
+            case Unary(operator, operand):
+                inner = self.of(operand)
+                return inner.through(-inner.value, -1.0) if operator == "-" else Slope(float(not inner.value))
+            case Choice(condition, yes, no):
+                return self.one_of(self.of(yes), self.of(no), lambda: bool(self.of(condition).value))
+            case Binary(operator, left, right):
+                return _binary(operator, self.of(left), self.of(right))
+            case Call(function, _, words) if words:
+                probe = (function, words)
+                return Slope(self.probed(probe), {probe: 1.0})
+            case Call(function, arguments):
+                return self.call(function, [self.of(argument) for argument in arguments])
+        raise NoSlope("it is no expression")
+
+    def one_of(self, a: Slope, b: Slope, first: Callable[[], bool]) -> Slope:
+        """The branch that is taken, or the mean of both."""
+        if self.all_branches:
+            return _sum(0.5 * (a.value + b.value), (0.5, a), (0.5, b))
+        return a if first() else b
+
+    def call(self, function: str, given: list[Slope]) -> Slope:
+        """A function of slopes."""
+        if function in ONE and len(given) == 1:
+            return given[0].through(*ONE[function](given[0].value))
+        match function, given:
+            case "min", [a, b]:
+                return self.one_of(a, b, lambda: a.value <= b.value)
+            case "max", [a, b]:
+                return self.one_of(a, b, lambda: a.value >= b.value)
+            case "pow", [a, b]:
+                return _power(a, b)
+            case "pwr", [a, b]:
+                size = _power(Slope(abs(a.value), a.through(0.0, math.copysign(1.0, a.value)).by), b)
+                return size if a.value >= 0 else size.through(-size.value, -1.0)
+            case "ternary_fcn", [condition, yes, no]:
+                return self.one_of(yes, no, lambda: bool(condition.value))
+            case "pwl", [x, *points]:
+                return _between(x, [p.value for p in points], held=not self.all_branches)
+        raise NoSlope(f"the slope of `{function}` is not known")
 
 
 def _sum(value: float, *parts: tuple[float, Slope]) -> Slope:
@@ -148,31 +179,14 @@ def _power(a: Slope, b: Slope) -> Slope:
     return _sum(value, (by_base, a), (by_exponent, b))
 
 
-def _call(function: str, given: list[Slope]) -> Slope:
-    if function in ONE and len(given) == 1:
-        return given[0].through(*ONE[function](given[0].value))
-    match function, given:
-        case "min", [a, b]:
-            return a if a.value <= b.value else b
-        case "max", [a, b]:
-            return a if a.value >= b.value else b
-        case "pow", [a, b]:
-            return _power(a, b)
-        case "pwr", [a, b]:
-            size = _power(Slope(abs(a.value), a.through(0.0, math.copysign(1.0, a.value)).by), b)
-            return size if a.value >= 0 else size.through(-size.value, -1.0)
-        case "ternary_fcn", [condition, yes, no]:
-            return yes if condition.value else no
-        case "pwl", [x, *points]:
-            return _between(x, [p.value for p in points])
-    raise NoSlope(f"the slope of `{function}` is not known")
-
-
-def _between(x: Slope, points: list[float]) -> Slope:
-    """Straight lines between (x, y) pairs, held beyond the ends."""
+def _between(x: Slope, points: list[float], held: bool) -> Slope:
+    """Straight lines between (x, y) pairs; beyond the ends held, or one line from end to end where not."""
     xs, ys = points[0::2], points[1::2]
     if len(xs) != len(ys) or len(xs) < 2 or any(b <= a for a, b in pairwise(xs)):
         raise NoSlope("its table is not in order")
+    if not held:
+        rise = (ys[-1] - ys[0]) / (xs[-1] - xs[0])
+        return x.through(ys[0] + rise * (x.value - xs[0]), rise)
     if not xs[0] < x.value < xs[-1]:
         return Slope(ys[0] if x.value <= xs[0] else ys[-1])
     k = bisect_right(xs, x.value) - 1

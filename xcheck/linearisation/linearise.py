@@ -134,11 +134,12 @@ class _Frame:
         if behaviour.gives == "c":
             return Passive(device.name, "c", (a, b), found.value, device.origin)
         # slopes of a clipped source may be 1e-30 of what they are elsewhere: no path at all, only rounding
-        terms = tuple(_term(probe, slope) for probe, slope in found.by.items() if slope)
+        terms = tuple(term_of(probe, slope) for probe, slope in found.by.items() if slope)
         return Controlled(device.name, "e" if behaviour.gives == "v" else "g", (a, b), terms, 0.0, device.origin)
 
 
-def _term(probe: Probe, slope: float) -> Term:
+def term_of(probe: Probe, slope: float) -> Term:
+    """A slope as a term of a controlled source."""
     letter, words = probe
     if letter == "i":
         return Term(slope, source=words[0])

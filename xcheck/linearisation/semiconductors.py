@@ -162,10 +162,11 @@ def depletion(parts: Parts, farad: float, volt: float) -> float:
 def mos(parts: Parts) -> None:
     """Models of level 1 to 3 with Meyer's capacitances. With drain and source exchanged by the voltage between them,
     the transconductances work from the other end."""
-    kind = parts.device.definition.type if parts.device.definition is not None else ""
-    if parts.model("level", 1.0) not in (1.0, 2.0, 3.0) or kind not in ("nmos", "pmos") or len(parts.device.nodes) < 4:
+    kind = parts.device.definition.type if parts.device.definition is not None else "nmos"
+    if parts.model("level", 1.0) not in (1.0, 2.0, 3.0) or kind not in ("nmos", "pmos"):
         raise NoEquivalent("its model is none of level 1 to 3")
-    drain, gate, source, bulk = parts.device.nodes[:4]
+    drain, gate, source = parts.device.nodes[:3]
+    bulk = parts.device.nodes[3] if len(parts.device.nodes) > 3 else source
     d = parts.behind(drain, "d", parts.value("rd"))
     s = parts.behind(source, "s", parts.value("rs"))
     near, far = (s, d) if parts.value("vds") >= 0 else (d, s)

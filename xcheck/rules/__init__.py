@@ -45,6 +45,7 @@ RULES: tuple[Rule, ...] = (
     Rule("ground-missing", "error", "no node 0 (or gnd)", ground_missing),
     Rule("node-dangling", "warning", "a node with one terminal that is no port", node_dangling),
     Rule("input-without-dc-path", "error", "an amplifier input without a DC path", input_without_dc_path),
+    Rule("amplifier-pins-uncertain", "warning", "evidence for an amplifier's pins conflicts or is too thin"),
     Rule("feedback-positive", "error", "net feedback at DC is positive", feedback_positive, also=("note",)),
     Rule("feedback-missing", "warning", "no way from output to inverting input", feedback_missing, also=("note",)),
     # how it is simulated

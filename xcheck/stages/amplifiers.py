@@ -9,8 +9,8 @@ from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element
 from xcheck.finding import Finding
 from xcheck.stages.bare import bare_amplifiers
 from xcheck.stages.directives import PinDirective, pin_directives
-from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins, signal_pins
-from xcheck.stages.model import LinearModel, bench, open_loop
+from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins
+from xcheck.stages.model import LinearModel, bench, measured, open_loop
 from xcheck.stages.nodes import held_still
 from xcheck.stages.pins import (
     OTHERS,
@@ -19,22 +19,30 @@ from xcheck.stages.pins import (
     Role,
     roles_by_comment,
     roles_by_name,
+    roles_by_package,
     speak_of_an_amplifier,
     supplies,
 )
+from xcheck.stages.structure import Structure, is_nonlinear
 from xcheck.stages.supplies import SupplyLevels
 from xcheck.stages.types import Amplifier, OpenLoop
-from xcheck.stages.weighing import Evidence, weigh
+from xcheck.stages.weighing import AT_THE_POINT, IN_PRINCIPLE, LINEAR, Evidence, Written, weigh
 
+LEAST_BALANCE = 0.5
+"""Of the gain from one input against that from the other, in a model of transistors."""
 LEAST_NAMED_GAIN = 10.0
 """What is enough where pin names or a comment tell an op-amp and the deck closes a loop around it: a part that the
 designer made poor on purpose."""
 
 
-def find_amplifiers(circuit: Circuit) -> tuple[tuple[Amplifier, ...], tuple[Finding, ...]]:
-    """All amplifiers in deck order, and what is wrong with directives that name them."""
+def find_amplifiers(
+    circuit: Circuit, written: Circuit | None = None
+) -> tuple[tuple[Amplifier, ...], tuple[Finding, ...]]:
+    """All amplifiers in deck order, and what is wrong with directives that name them or with their pins.
+
+    written: the circuit as the deck has it, where `circuit` is the same at its operating point."""
     directives, findings = pin_directives(circuit)
-    search = _Search(circuit, directives)
+    search = _Search(circuit, written or circuit, directives)
     amplifiers = search.run()
     return amplifiers, (*findings, *search.findings)
 
@@ -43,14 +51,14 @@ class _Search:
     """Looks at instances from the innermost outwards: an instance takes the place of the one amplifier inside it where
     it is itself an op-amp."""
 
-    def __init__(self, circuit: Circuit, directives: Mapping[str, PinDirective]) -> None:
+    def __init__(self, circuit: Circuit, written: Circuit, directives: Mapping[str, PinDirective]) -> None:
         self.circuit = circuit
+        self.structure = Structure(circuit, written)
         self.directives = directives
         self.findings: list[Finding] = []
         self.held = held_still(circuit, _follows)
         self.levels = SupplyLevels(circuit)
-        self.judged: dict[tuple[int, float], list[SignalPins]] = {}
-        self.loops: dict[tuple[int, Mapping[Role, str] | tuple[str, ...]], OpenLoop] = {}
+        self.loops: dict[tuple[object, ...], OpenLoop] = {}
         self.devices: dict[int, tuple[Device, ...]] = {}
         self.members: dict[str, list[Element]] = {}
         for element in circuit.elements:
@@ -82,16 +90,16 @@ class _Search:
             return None
         if evidence.fault and told is not None:
             self.findings.append(Finding("syntax", "error", told.place, evidence.fault, instance.name))
+        if evidence.conflict:
+            self.findings.append(_uncertain(instance, evidence.conflict))
         return self._amplifier(instance, evidence)
 
     def _evidence(self, instance: Instance, told: PinDirective | None, inner: Sequence[Amplifier]) -> Evidence | None:
-        pins = [pin for pin, _ in instance.pins]
-        by_comment = roles_by_comment(pins, instance.comments)
-        named = by_comment or (roles_by_name(pins) if speak_of_an_amplifier(pins) else {})
-        source = "comment" if by_comment else "pin names"
-        seen = self._seen(instance, named)
+        written = _written(instance)
+        named = written[0].roles if written else {}
+        seen, how = self._seen(instance, named)
         if told is None and seen is None:
-            if not named or not _is_nonlinear(instance) or not _looks_like_an_amplifier(instance.local):
+            if not named or not is_nonlinear(instance) or not _looks_like_an_amplifier(instance.local):
                 return None
             if inner and not _is_wrapper(instance, inner[0], self.members):
                 return None
@@ -99,14 +107,20 @@ class _Search:
             one = inner[0]
             if GROUND not in (one.non_inverting, one.inverting):
                 return None
-        return weigh(instance, seen, named, source, told)
+        return weigh(instance, seen, how, written, told)
 
-    def _seen(self, instance: Instance, named: Mapping[Role, str]) -> SignalPins | None:
-        """What the instance's linear elements do at its pins, None where that is no op-amp's."""
-        found = self._fitting(instance, named, self._judge(instance, LEAST_GAIN))
+    def _seen(self, instance: Instance, named: Mapping[Role, str]) -> tuple[SignalPins | None, str]:
+        """What the instance's elements do at its pins, and how that is known; None where that is no op-amp's."""
+        structure = self.structure
+        found = self._fitting(instance, named, structure.at_the_point(instance, named, LEAST_GAIN))
         if found is None and set(SIGNAL) <= named.keys() and self._is_fed_back(instance, named):
-            found = self._fitting(instance, named, self._judge(instance, LEAST_NAMED_GAIN))
-        return found
+            found = self._fitting(instance, named, structure.at_the_point(instance, named, LEAST_NAMED_GAIN))
+        if not is_nonlinear(instance):
+            return found, LINEAR
+        if found is None or not _is_differential(found):
+            found = self._fitting(instance, named, structure.in_principle(instance, named, LEAST_GAIN))
+            return found if found is not None and _is_differential(found) else None, IN_PRINCIPLE
+        return found, AT_THE_POINT
 
     def _fitting(
         self, instance: Instance, named: Mapping[Role, str], judged: Sequence[SignalPins]
@@ -133,14 +147,6 @@ class _Search:
             self.devices[key] = tuple(e for e in instance.local if isinstance(e, Device))
         return self.devices[key]
 
-    def _judge(self, instance: Instance, least: float) -> list[SignalPins]:
-        """What an instance's linear elements are, the others left out; once for all alike."""
-        key = (id(instance.local), least)
-        if key not in self.judged:
-            linear = [e for e in instance.local if not isinstance(e, Device)]
-            self.judged[key] = signal_pins(linear, [pin for pin, _ in instance.pins], least)
-        return self.judged[key]
-
     def _is_fed_back(self, instance: Instance, named: Mapping[Role, str]) -> bool:
         nodes = dict(instance.pins)
         return self.levels.tied(nodes[named["out"]], nodes[named["in-"]])
@@ -160,6 +166,8 @@ class _Search:
             loop = OpenLoop({}, None, exact=False, reason=reason)
         else:
             loop = self._open_loop(instance, signal)
+            if is_nonlinear(instance):
+                loop = measured(loop)
         first = next((e for e in members if isinstance(e, Controlled)), None) or next(
             (e for e in members if isinstance(e, Device)), members[0]
         )
@@ -173,8 +181,9 @@ class _Search:
         )  # fmt: skip
 
     def _open_loop(self, instance: Instance, signal: Sequence[str]) -> OpenLoop:
-        key = (id(instance.local), tuple(signal))
-        pins = [p for p, _ in instance.pins]
+        loose = self.structure.loose(instance, dict(zip(SIGNAL, signal, strict=True)))
+        key = (id(instance.local), tuple(signal), loose)
+        pins = [p for p, _ in instance.pins if p not in loose]
         if key not in self.loops:
             plus, minus, output = signal
             model = LinearModel(bench(instance.local, [p for p in pins if p != output]), plus, minus, output)
@@ -201,9 +210,30 @@ def _follows(source: Controlled) -> bool:
     return sum(abs(t.gain) for t in source.terms) <= LEAST_NAMED_GAIN
 
 
-def _is_nonlinear(instance: Instance) -> bool:
-    """Whether an instance holds devices, or what stands for them at the operating point."""
-    return any(isinstance(e, Device) or e.origin.device for e in instance.local)
+def _written(instance: Instance) -> list[Written]:
+    """What the author of a subcircuit wrote of its pins, what counts most first."""
+    pins = [pin for pin, _ in instance.pins]
+    by_comment = roles_by_comment(pins, instance.comments)
+    found = [Written("comment", by_comment)] if by_comment else []
+    if speak_of_an_amplifier(pins):
+        found.append(Written("pin names", roles_by_name(pins)))
+    by_package = roles_by_package(pins)
+    if by_package:
+        found.append(Written("package pin numbers", by_package))
+    return found
+
+
+def _uncertain(instance: Instance, conflict: str) -> Finding:
+    return Finding(
+        "amplifier-pins-uncertain", "warning", instance.origin.card.place(),
+        f"what is known of the pins of `{instance.subckt}` does not agree: {conflict}", instance.name,
+        advice=f"correct what is wrong, or write `* xcheck: amplifier {instance.subckt} in+=PIN in-=PIN out=PIN`",
+    )  # fmt: skip
+
+
+def _is_differential(seen: SignalPins) -> bool:
+    """Whether a nonlinear block has two inputs of about the same gain: a gate or a transistor stage has not."""
+    return GROUND not in (seen.plus, seen.minus) and seen.balance > LEAST_BALANCE
 
 
 def _looks_like_an_amplifier(elements: Sequence[Element]) -> bool:

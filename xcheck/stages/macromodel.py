@@ -33,7 +33,8 @@ class SignalPins:
     """Non-inverting and inverting input ('0' where the amplifier has only one), output, gain at DC, and the
     controlled source whose death takes the gain away.
 
-    tied: other pins that conduct to an input; moving: other pins that move the output.
+    tied: other pins that conduct to an input; moving: other pins that move the output; balance: the smaller of the two
+    inputs' gains by the larger.
     """
 
     plus: str
@@ -43,11 +44,14 @@ class SignalPins:
     gain_element: str
     tied: tuple[str, ...] = ()
     moving: tuple[str, ...] = ()
+    balance: float = 1.0
 
 
-def gains_to(elements: Sequence[Element], pins: Sequence[str], output: str) -> dict[str, float]:
-    """V(output)/V(pin) at DC with every pin but the output held at 0 V in turn."""
-    held = [p for p in pins if p not in (output, GROUND)]
+def gains_to(
+    elements: Sequence[Element], pins: Sequence[str], output: str, loose: Sequence[str] = ()
+) -> dict[str, float]:
+    """V(output)/V(pin) at DC with every pin held at 0 V in turn, but for the output and the loose ones."""
+    held = [p for p in pins if p not in (output, GROUND, *loose)]
     made = bench(elements, held)
     row = made.index.get(output)
     if row is None or not held:
@@ -56,14 +60,17 @@ def gains_to(elements: Sequence[Element], pins: Sequence[str], output: str) -> d
     return {p: float(solution[row, k].real) for k, p in enumerate(held)}
 
 
-def signal_pins(elements: Sequence[Element], pins: Sequence[str], least: float = LEAST_GAIN) -> list[SignalPins]:
-    """The op-amps that some linear elements hold, as seen from their pins; [] where they are none."""
+def signal_pins(
+    elements: Sequence[Element], pins: Sequence[str], least: float = LEAST_GAIN, loose: Sequence[str] = ()
+) -> list[SignalPins]:
+    """The op-amps that some linear elements hold, as seen from their pins; [] where they are none. loose: pins that
+    nothing outside touches."""
     if len(elements) > MOST_ELEMENTS or any(isinstance(e, Device) for e in elements):
         return []
     found = []
     for output in _driven_pins(elements, pins):
         try:
-            gains = gains_to(elements, pins, output)
+            gains = gains_to(elements, pins, output, loose)
         except np.linalg.LinAlgError:  # an input that only a current source touches
             continue
         most = max((abs(g) for g in gains.values()), default=0.0)
@@ -74,8 +81,11 @@ def signal_pins(elements: Sequence[Element], pins: Sequence[str], least: float =
             continue
         inputs = (plus[0] if plus else GROUND, minus[0] if minus else GROUND)
         if not _has_feedback(elements, pins, list(strong), output):
-            element = gain_element(elements, pins, inputs, output)
-            found.append(SignalPins(*inputs, output, most, element, *other_pins(elements, pins, list(strong), output)))
+            held = [p for p in pins if p == output or p not in loose]
+            element = gain_element(elements, held, inputs, output)
+            others = other_pins(elements, held, list(strong), output)
+            balance = min(abs(g) for g in strong.values()) / most if len(strong) > 1 else 0.0
+            found.append(SignalPins(*inputs, output, most, element, *others, balance))
     return found
 
 

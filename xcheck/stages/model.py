@@ -6,7 +6,7 @@ voltage-driven ports and one current-driven port).
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -298,3 +298,8 @@ def open_loop(model: LinearModel) -> OpenLoop:
 def _ohm(admittance: complex) -> float | None:
     """Resistance of an admittance, None (infinite) below LEAST_SIEMENS."""
     return 1.0 / admittance.real if abs(admittance.real) > LEAST_SIEMENS else None
+
+
+def measured(loop: OpenLoop) -> OpenLoop:
+    """The same values, said to come from a simulator's operating point rather than from the deck's own elements."""
+    return replace(loop, values={name: Quantity(q.value, "measured") for name, q in loop.values.items()})

@@ -46,6 +46,20 @@ def roles_by_name(pins: Sequence[str]) -> dict[Role, str]:
     return {role: found[0] for role, found in claims.items() if len(found) == 1}
 
 
+PACKAGE: Mapping[str, Role] = {"2": "in-", "3": "in+", "4": "v-", "6": "out", "7": "v+"}
+"""Pin numbers of a single op-amp in an eight-pin package (common practice since the first ones)."""
+
+
+def roles_by_package(pins: Sequence[str]) -> dict[Role, str]:
+    """Roles by the numbers of the eight-pin package, where pins bear just these; pins 1, 5 and 8 may be there too. A
+    model that numbers its pins in order is no package."""
+    others = [pin for pin in pins if pin not in PACKAGE]
+    in_order = [str(k + 1) for k in range(len(pins))]
+    if not set(PACKAGE) <= set(pins) or list(pins) == in_order or not set(others) <= {"1", "5", "8"}:
+        return {}
+    return {role: pin for pin, role in PACKAGE.items()}
+
+
 def speak_of_an_amplifier(pins: Sequence[str]) -> bool:
     """Whether pin names alone tell an op-amp: both inputs and the output, not all by single letters unless there
     are supplies too, and beside them only what op-amps have."""
@@ -62,6 +76,7 @@ def roles_by_comment(pins: Sequence[str], comments: Sequence[Comment]) -> dict[R
     one line a pin in that order, or one line a pin that names it (`3 = output`). {} where none tells both inputs
     and the output."""
     texts = [c.text.replace("|", " ").strip().lower() for c in comments]
+    texts = [text for text in texts if not text.startswith("xcheck:")]
     told = [_roles_of(items, pins) for items in _one_line(texts, len(pins))]
     told.append(_by_pin(texts, pins))
     told += [_roles_of(items, pins) for items in _in_order(texts, len(pins))]
