@@ -102,12 +102,14 @@ class Behaviour:
 
 @dataclass(frozen=True, slots=True)
 class DeviceModel:
-    """A `.model` card as seen from a device: name, type ('npn', 'd', ...), and the parameters that are numbers."""
+    """A `.model` card as seen from a device: name, type ('npn', 'd', ...), and the parameters that are numbers.
+    text: all that is written behind the type, with a number in place of each expression."""
 
     name: str
     type: str
     values: tuple[tuple[str, float], ...]
     card: Card
+    text: str = ""
 
     def get(self, name: str, otherwise: float = 0.0) -> float:
         """The value of a parameter."""
@@ -121,7 +123,8 @@ class Device:
 
     behaviour: of a source, where its expression is known; definition: the model of a device that has one;
     parameters: the instance's own, as numbers ('area', 'w', ...); control: flat name of the source whose current
-    a W switch reads."""
+    a W switch reads; connections: of an XSPICE device, the words between name and model, each with what it is:
+    'node' and 'source' (flat names) or 'mark'."""
 
     name: str
     kind: str
@@ -134,6 +137,7 @@ class Device:
     definition: DeviceModel | None = None
     parameters: tuple[tuple[str, float], ...] = ()
     control: str = ""
+    connections: tuple[tuple[str, str], ...] = ()
 
 
 Element = Passive | Coupling | Source | Controlled | Device

@@ -26,7 +26,9 @@ def fields_of(text: str) -> tuple[Field, ...]:
     position = 0
     while position < len(text):
         character = text[position]
-        if character.isspace() or character in ",=":
+        if character == "=" and start >= 0 and text[position - 1] in "<>!":
+            position += 1
+        elif character.isspace() or character in ",=":
             if start >= 0:
                 fields.append(Field(text[start:position], start, position))
                 start = -1

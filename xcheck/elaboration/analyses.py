@@ -39,13 +39,22 @@ def _argument(field: Field, scope: Scope) -> str | float:
 
 def temperature_of(cards: Iterable[Card], scope: Scope, problems: Problems) -> float:
     """Degrees Celsius by the last `.temp` card or `.options temp=`; 27 without either."""
+    return _celsius(cards, "temp", scope, problems)
+
+
+def nominal_of(cards: Iterable[Card], scope: Scope, problems: Problems) -> float:
+    """Degrees Celsius that values and models hold at, by `.options tnom=`; 27 without."""
+    return _celsius(cards, "tnom", scope, problems)
+
+
+def _celsius(cards: Iterable[Card], key: str, scope: Scope, problems: Problems) -> float:
     celsius = 27.0
     for card in cards:
         field: Field | None = None
-        if card.kind == ".temp" and len(card.fields) > 1:
+        if card.kind == ".temp" and key == "temp" and len(card.fields) > 1:
             field = card.fields[1]
         elif card.kind in (".options", ".option", ".opt"):
-            field = words_of(card).pairs.get("temp")
+            field = words_of(card).pairs.get(key)
         if field is None:
             continue
         number = read_number(field.text)

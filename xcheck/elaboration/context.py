@@ -17,7 +17,8 @@ from xcheck.elaboration.words import braced
 @dataclass(frozen=True)
 class Context:
     """One instance's surroundings. bodies: the bodies whose definitions can be seen, innermost first; key: equal
-    for instances whose elements have equal values."""
+    for instances whose elements have equal values; nominal: degrees Celsius that values and models hold at; many:
+    how many there are of each element, by `m=` of an instance around it, in place of an `m=` of its own."""
 
     prefix: str
     path: tuple[str, ...]
@@ -27,9 +28,12 @@ class Context:
     bodies: Sequence[Body]
     problems: Problems
     key: tuple[object, ...] = ()
+    nominal: float = 27.0
+    many: float | None = None
 
     def node(self, word: str) -> str:
         """A node's flat name; `word` in lower case."""
+        word = word.strip('"')
         if word in ("0", "gnd"):
             return GROUND
         mapped = self.pins.get(word)

@@ -4,17 +4,21 @@ import re
 from typing import Literal
 
 from xcheck.circuit.elements import Behaviour, Controlled, Device, Element, Origin, Term
-from xcheck.circuit.trees import Call, Node
+from xcheck.circuit.trees import Binary, Call, Constant, Node
 from xcheck.deck.cards import Card, Field
 from xcheck.elaboration.affine import Linear, Probe, depends_on_time, linear_form, probes_in
 from xcheck.elaboration.context import Amount, Context, is_value
 from xcheck.elaboration.expressions import ExpressionError
+from xcheck.elaboration.geometry import factor
 from xcheck.elaboration.passives import Maker
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.resolution import polynomial, resolved
+from xcheck.elaboration.tables import table
 from xcheck.elaboration.words import opened, words_of
 
 _POLY = re.compile(r"poly\s*(?:\(\s*(\d+)\s*\))?$")
+FACTORS = ("m", "tc1", "tc2", "temp", "dtemp")
+"""What multiplies an expression's value."""
 Kind = Literal["e", "f", "g", "h"]
 
 
@@ -32,8 +36,10 @@ def controlled(card: Card, problems: Problems) -> Maker | None:
     head = fields[2].key.split("{")[0].split("(")[0]
     if head == "value" and len(fields) > 3:
         return _expression(card, fields[3], kind)
-    if head in ("table", "laplace", "freq", "chebyshev"):
-        return _device(card, "frequency-dependent expression" if head != "table" else "table")
+    if head == "table":
+        return table(card, fields, problems)
+    if head in ("laplace", "freq", "chebyshev"):
+        return _device(card, "frequency-dependent expression")
     if (poly := _POLY.match(fields[2].key)) or fields[2].key == "poly":
         return _poly(card, kind, fields, poly.group(1) if poly else None, problems)
     wanted = 2 if kind in "eg" else 1
@@ -50,9 +56,12 @@ def controlled(card: Card, problems: Problems) -> Maker | None:
         return None
     gain = Amount(card, gains[0])
     nodes = (fields[0].key, fields[1].key)
+    many = Amount(card, words.pairs["m"]) if "m" in words.pairs and kind in "fg" else None
 
     def make(context: Context) -> Element | None:
         value = gain.at(context)
+        if value is not None and kind in "fg":
+            value *= context.many or (many.at(context) if many is not None else None) or 1.0
         ends = (context.node(nodes[0]), context.node(nodes[1]))
         if value is None:
             return Device(context.name(card), kind, ends, (), "", "value unknown", Origin(card, context.path))
@@ -92,8 +101,6 @@ def _poly(card: Card, kind: Kind, fields: tuple[Field, ...], dimension: str | No
         if any(v is None for v in values):
             return Device(name, kind, ends, sensing, "", "value unknown", origin)
         numbers = [v for v in values if v is not None]
-        if count == 1 and len(numbers) == 1:
-            numbers.insert(0, 0.0)  # a single coefficient of a one-input POLY is its gain, not its constant
         if any(numbers[count + 1 :]):
             inputs = [_probe(controls[width * k : width * (k + 1)], context) for k in range(count)]
             behaviour = Behaviour("v" if kind in "eh" else "i", polynomial(numbers, inputs))
@@ -115,6 +122,9 @@ def _probe(words: tuple[Field, ...], context: Context) -> Node:
 def behavioural(card: Card, problems: Problems) -> Maker | None:
     """`B1 a b V={...}` or `I={...}`."""
     pairs = words_of(card).pairs
+    if len(opened(card.fields[1:])) < 2:
+        problems.say("syntax", "error", card, None, f"`{card.text[:60]}`: two nodes are wanted")
+        return None
     if "v" in pairs:
         return _expression(card, pairs["v"], "e")
     if "i" in pairs:
@@ -124,8 +134,10 @@ def behavioural(card: Card, problems: Problems) -> Maker | None:
 
 
 def _expression(card: Card, field: Field, kind: Kind) -> Maker:
-    nodes = (card.fields[1].key, card.fields[2].key)
+    ends_of = opened(card.fields[1:])
+    nodes = (ends_of[0].key, ends_of[1].key)
     amount = Amount(card, field, expression=True)
+    pairs = {k: Amount(card, f) for k, f in words_of(card).pairs.items() if k in FACTORS}
 
     def make(context: Context) -> Element | None:
         name, origin = context.name(card), Origin(card, context.path)
@@ -135,13 +147,19 @@ def _expression(card: Card, field: Field, kind: Kind) -> Maker:
             if level is None:
                 return Device(name, card.kind, ends, (), "", "value unknown", origin)
             return Controlled(name, kind, ends, (), level, origin)
+        own = {key: parameter.at(context) for key, parameter in pairs.items()}
+        if context.many is not None and card.kind in "fg":
+            own["m"] = context.many
+        times = factor("c", own.get, None, context.scope.lookup("temper"), context.nominal)
         probes = probes_in(amount.tree)
         sensing = tuple(dict.fromkeys(context.node(n) for letter, ns in probes if letter == "v" for n in ns))
         try:
             form = None if depends_on_time(amount.tree) else linear_form(amount.tree, context.scope.evaluator())
             if form is not None:
-                return _from_form(name, kind, ends, form, context, origin)
-            behaviour = Behaviour("v" if kind in "eh" else "i", resolved(amount.tree, context))
+                return _from_form(name, kind, ends, form.scaled(times), context, origin)
+            inner = resolved(amount.tree, context)
+            tree = inner if times == 1 else Binary("*", Constant(times), inner)
+            behaviour = Behaviour("v" if kind in "eh" else "i", tree)
         except ExpressionError as error:
             if not error.unknown:
                 return Device(name, card.kind, ends, sensing, "", "expression", origin)
@@ -167,7 +185,8 @@ def _probe_term(gain: float, probe: Probe, context: Context) -> Term:
 
 
 def _device(card: Card, reason: str) -> Maker:
-    nodes = (card.fields[1].key, card.fields[2].key)
+    ends_of = opened(card.fields[1:])
+    nodes = (ends_of[0].key, ends_of[1].key)
     inside = [f.key for f in opened(card.fields[4:]) if not is_value(f) and re.fullmatch(r"[\w.+\-/]+", f.text)]
     probes = re.findall(r"v\s*\(([^()]*)\)", card.text.lower())
     named = [w for p in probes for w in re.split(r"[\s,]+", p.strip())] or inside

@@ -4,6 +4,7 @@ from dataclasses import dataclass, field
 
 from xcheck.deck.cards import Card, Comment, Deck, Field
 from xcheck.elaboration.problems import Problems
+from xcheck.elaboration.shadows import Shadows
 from xcheck.elaboration.words import words_of
 
 
@@ -16,11 +17,13 @@ class Branches:
 
 @dataclass
 class Body:
-    """One scope or branch: cards and conditions in order, and definitions by lower-case name."""
+    """One scope or branch: cards and conditions in order, and definitions by lower-case name. outer: the body that
+    its text stands in."""
 
     items: list["Card | Branches"] = field(default_factory=list)
     subckts: dict[str, "Definition"] = field(default_factory=dict)
     models: dict[str, Card] = field(default_factory=dict)
+    outer: "Body | None" = None
 
 
 @dataclass
@@ -39,12 +42,15 @@ def sort_cards(deck: Deck, problems: Problems) -> Body:
     """The deck's cards as one body with nested definitions."""
     top = Body()
     stack: list[tuple[str, Card | None, Body]] = [("", None, top)]
+    shadows = Shadows(problems)
     comments = _comments_around(deck)
     for index, card in enumerate(deck.cards):
         body = stack[-1][2]
         if card.kind in (".subckt", ".macro"):
             definition = _definition(card, comments.get(index, ()), problems)
-            _add(definition, body, problems)
+            definition.body.outer = body
+            body.subckts.setdefault(definition.name, definition)
+            shadows.subckt(definition, body)
             stack.append((".ends", card, definition.body))
         elif card.kind in (".ends", ".eom"):
             _close(stack, ".ends", card, problems)
@@ -55,32 +61,23 @@ def sort_cards(deck: Deck, problems: Problems) -> Body:
         else:
             if card.kind == ".model" and len(card.fields) > 1:
                 body.models.setdefault(card.fields[1].key, card)
+            shadows.card(card, body)
             body.items.append(card)
     for closing, opener, _ in stack[1:]:
         if opener is not None:
             problems.say("syntax", "error", opener, None, f"`{opener.kind}` without `{closing}`")
+    shadows.tell()
     return top
-
-
-def _add(definition: Definition, body: Body, problems: Problems) -> None:
-    if definition.name not in body.subckts:
-        body.subckts[definition.name] = definition
-        return
-    card = definition.card
-    problems.say(
-        "shadowed-definition", "warning", card, card.fields[1],
-        f"subcircuit `{definition.name}` is defined twice; the first one counts",
-    )  # fmt: skip
 
 
 def _branch(stack: list[tuple[str, Card | None, Body]], card: Card, problems: Problems) -> None:
     if card.kind == ".if":
-        branches = Branches([(card, Body())])
+        branches = Branches([(card, Body(outer=stack[-1][2]))])
         stack[-1][2].items.append(branches)
         stack.append((".endif", card, branches.branches[0][1]))
     elif len(stack) > 1 and stack[-1][0] == ".endif":
         branches = next(i for i in reversed(stack[-2][2].items) if isinstance(i, Branches))
-        branches.branches.append((card if card.kind == ".elseif" else None, Body()))
+        branches.branches.append((card if card.kind == ".elseif" else None, Body(outer=stack[-2][2])))
         stack[-1] = (".endif", card, branches.branches[-1][1])
     else:
         problems.say("syntax", "error", card, None, f"`{card.kind}` without `.if`")

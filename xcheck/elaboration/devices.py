@@ -1,11 +1,12 @@
 """Cards of elements that the linear equations do not hold: kept with their nodes, model and a reason."""
 
+import re
 from collections.abc import Mapping
 
-from xcheck.circuit.elements import Device, DeviceModel, Element, Origin
+from xcheck.circuit.elements import Device, Element, Origin
 from xcheck.deck.cards import Card, Field
-from xcheck.deck.fields import fields_of
 from xcheck.elaboration.context import Amount, Context, is_value
+from xcheck.elaboration.models import definition_of
 from xcheck.elaboration.passives import Maker
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.words import words_of
@@ -25,6 +26,9 @@ KINDS: Mapping[str, tuple[int, int, int, bool, str]] = {
     "y": (4, 4, 0, True, "transmission line"),
     "p": (4, 40, 0, True, "coupled lines"),
 }
+
+_CONNECTION = re.compile(r"%\s*[a-z]+|[\[\]~]|[^\s=(),\[\]~%]+")
+"""Words of an XSPICE device: parentheses, commas and equal signs are blanks there."""
 
 
 def device(card: Card, problems: Problems) -> Maker | None:
@@ -49,10 +53,12 @@ def device(card: Card, problems: Problems) -> Maker | None:
         behind = plain[len(words) + (card.kind == "w") + 1 :]
         if card.kind in "dqjz" and behind and is_value(behind[0]):  # the area, without a key
             own.insert(0, ("area", Amount(card, behind[0]).at(context)))
+        if context.many is not None and card.kind in "dqmjz":
+            own = [*((key, value) for key, value in own if key != "m"), ("m", context.many)]
         control = context.prefix + plain[2].key if card.kind == "w" else ""
         return Device(
             context.name(card), card.kind, inner, felt, name, reason, Origin(card, context.path),
-            definition=_definition(name, context, models) if has_model else None,
+            definition=definition_of(name, context, models) if has_model else None,
             parameters=tuple((key, value) for key, value in own if value is not None), control=control,
         )  # fmt: skip
 
@@ -74,56 +80,51 @@ def _nodes_and_model(
     return plain[:fewest], field
 
 
-def _definition(name: str, context: Context, models: dict[int, dict[str, Amount]]) -> DeviceModel | None:
-    """The model that a name stands for, with its parameters evaluated where it is used; None where there is none.
-    models: the parameters of model cards read before, by the card's identity."""
-    card = context.model(name)
-    if card is None or len(card.fields) < 3:
-        return None
-    if id(card) not in models:
-        models[id(card)] = {key: Amount(card, value) for key, value in model_words(card).items()}
-    values = ((key, amount.quiet(context)) for key, amount in models[id(card)].items())
-    kind = card.fields[2].key.split("(")[0]
-    return DeviceModel(name, kind, tuple((key, value) for key, value in values if value is not None), card)
-
-
-def model_words(card: Card) -> dict[str, Field]:
-    """The parameters of a model card by name; they may stand in parentheses."""
-    opened = []
-    for field in card.fields:
-        head, parenthesis, _ = field.text.partition("(")
-        start = field.start + len(head) + 1
-        if parenthesis and field.text.endswith(")") and (not head or head.isalnum()):
-            inner = fields_of(field.text[len(head) + 1 : -1])
-            opened += [Field(f.text, f.start + start, f.end + start) for f in inner]
-        else:
-            opened.append(field)
-    found: dict[str, Field] = {}
-    for index, field in enumerate(opened[1:-1], 1):
-        if field.text == "=":
-            found[opened[index - 1].key] = opened[index + 1]
-    return found
-
-
 def _binned(name: str, context: Context) -> bool:
     """Whether models `name.1`, `name.2` ... stand for one name."""
     return any(known.startswith(name + ".") for known in context.model_names())
 
 
 def code_model(card: Card, problems: Problems) -> Maker | None:
-    """An XSPICE device: `A1 a [b c] model`."""
-    plain = words_of(card).plain
-    if len(plain) < 2:
+    """An XSPICE device: `A1 a [b c] %vd(p n) null model`."""
+    words = list(_CONNECTION.finditer(card.text.lower(), card.fields[0].end))
+    if len(words) < 2:
         problems.say("syntax", "error", card, None, f"`{card.text[:60]}`: connections and a model are wanted")
         return None
-    names = [w.strip("[]()~") for f in plain[:-1] for w in [f.key]]
-    nodes = [n for n in names if n and not n.startswith("%") and n != "null"]
+    *words, model = words
+    named = Field(card.text[model.start() : model.end()], model.start(), model.end())
+    kinds = _kinds([word.group() for word in words])
+    models: dict[int, dict[str, Amount]] = {}
 
     def make(context: Context) -> Element | None:
-        if context.model(plain[-1].key) is None:
-            context.problems.unknown_model(card, plain[-1], context.model_names(), "model")
-        flat = tuple(context.node(n) for n in nodes)
-        origin = Origin(card, context.path)
-        return Device(context.name(card), "a", flat, (), plain[-1].key, "code model", origin)
+        if context.model(named.key) is None:
+            context.problems.unknown_model(card, named, context.model_names(), "model")
+        flat = tuple(
+            (context.node(word) if kind == "node" else context.prefix + word if kind == "source" else word, kind)
+            for word, kind in kinds
+        )
+        return Device(
+            context.name(card), "a", tuple(word for word, kind in flat if kind == "node"), (), named.key, "code model",
+            Origin(card, context.path), definition=definition_of(named.key, context, models), connections=flat,
+        )  # fmt: skip
 
     return make
+
+
+def _kinds(words: list[str]) -> list[tuple[str, str]]:
+    """Each word of an XSPICE device's connections with its kind, see `Device.connections`."""
+    found: list[tuple[str, str]] = []
+    mark, inside = "", False
+    for word in words:
+        if word[0] == "%":
+            mark = word[1:].strip()
+            found.append(("%" + mark, "mark"))
+            continue
+        if word in ("[", "]", "~", "null"):
+            found.append((word, "mark"))
+            inside = word == "[" or (inside and word != "]")
+        else:
+            found.append((word, "source" if mark == "vnam" else "node"))
+        if not inside:  # a mark holds for one connection, or for all within brackets
+            mark = ""
+    return found

@@ -1,22 +1,23 @@
 """Elaboration: bodies expanded instance by instance into one flat circuit."""
 
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Collection, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 
 from xcheck.circuit.elements import Analysis, Circuit, Device, Element, Instance, Origin
 from xcheck.deck.cards import Card, Deck, Field
 from xcheck.elaboration.analyses import KINDS as KINDS_OF_ANALYSIS
-from xcheck.elaboration.analyses import analysis_of, is_analysis, temperature_of
+from xcheck.elaboration.analyses import analysis_of, is_analysis, nominal_of, temperature_of
 from xcheck.elaboration.context import Context
 from xcheck.elaboration.controlled import behavioural, controlled
 from xcheck.elaboration.definitions import Body, Branches, Definition, sort_cards
 from xcheck.elaboration.devices import KINDS, code_model, device
 from xcheck.elaboration.expressions import ExpressionError, Function, parse
+from xcheck.elaboration.geometry import NOMINAL_CELSIUS
 from xcheck.elaboration.passives import Maker, coupling, passive
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.scopes import Scope
 from xcheck.elaboration.sources import source
-from xcheck.elaboration.words import Words, braced, words_of
+from xcheck.elaboration.words import Words, braced, opened, words_of
 from xcheck.errors import CallError
 
 MOST_ELEMENTS = 250_000
@@ -63,24 +64,26 @@ class _Elaboration:
         self.deck = deck
         self.problems = Problems()
         self.top = sort_cards(deck, self.problems)
-        self.functions: dict[str, Function] = {}
+        self.functions: dict[int, Mapping[str, Function]] = {}
         self.everywhere = self._global_nodes()
+        self.multiplied = self._multiplied()
         self.elements: list[Element] = []
         self.instances: list[Instance] = []
         self.plans: dict[int, _Plan] = {}
         self.locals: dict[tuple[object, ...], tuple[Element, ...]] = {}
         self.full = False
         self.made = 0
+        self.nominal = NOMINAL_CELSIUS
 
     def circuit(self, subckt: str | None) -> Circuit:
-        self._functions(self.top)
-        scope = Scope(None, self.functions, self.problems)
+        scope = Scope(None, self._functions(self.top), self.problems)
         celsius = temperature_of(self.deck.cards, scope, self.problems)
         scope.set("temper", celsius)
+        self.nominal = nominal_of(self.deck.cards, scope, self.problems)
         self._parameters(self.top, scope)
         boundary: tuple[str, ...] = ()
         if subckt is None:
-            context = Context("", (), {}, self.everywhere, scope, (self.top,), self.problems)
+            context = Context("", (), {}, self.everywhere, scope, (self.top,), self.problems, nominal=self.nominal)
             self._expand(self.top, context, ())
             analyses = self._analyses(scope)
         else:
@@ -97,31 +100,53 @@ class _Elaboration:
         if definition is None:
             known = ", ".join(sorted(self.top.subckts)) or "none"
             raise CallError(f"{self.deck.path} defines no subcircuit `{name}` (it defines: {known})")
-        inner = Scope(scope, self.functions, self.problems)
+        inner = Scope(scope, self._functions(definition.body), self.problems)
         for key, value in definition.defaults.items():
             inner.define(key, definition.card, value)
         self._parameters(definition.body, inner)
         pins = {pin: pin for pin in definition.pins}
         bodies = (definition.body, self.top)
-        context = Context("", (), pins, self.everywhere, inner, bodies, self.problems)
+        context = Context("", (), pins, self.everywhere, inner, bodies, self.problems, nominal=self.nominal)
         self._expand(definition.body, context, (definition.name,))
         return definition.pins
 
     def _global_nodes(self) -> frozenset[str]:
         return frozenset(f.key for card in self.deck.cards if card.kind == ".global" for f in card.fields[1:])
 
+    def _multiplied(self) -> frozenset[str]:
+        """Subcircuits that some instance gives an `m=`: ngspice then writes `m={m}` on each of their elements."""
+        calls = (words_of(card) for card in self.deck.cards if card.kind == "x" and "=" in card.text)
+        return frozenset(words.plain[-1].key for words in calls if "m" in words.pairs and words.plain)
+
     def _analyses(self, scope: Scope) -> tuple[Analysis, ...]:
         return tuple(analysis_of(card, scope) for card in self.deck.cards if is_analysis(card))
 
-    def _functions(self, body: Body) -> None:
-        """User functions of the whole deck: ngspice knows them everywhere."""
-        for card in self.deck.cards:
-            if card.kind == ".func" or (card.kind == ".param" and "(" in card.text.split("=")[0]):
-                self._function(card)
+    def _functions(self, body: Body) -> Mapping[str, Function]:
+        """The functions that can be used in a body: its own, and those of the bodies that its text stands in."""
+        known = self.functions.get(id(body))
+        if known is None:
+            outer = self._functions(body.outer) if body.outer is not None else {}
+            own = dict(self._own_functions(body))
+            known = self.functions[id(body)] = {**outer, **own} if own else outer
+        return known
 
-    def _function(self, card: Card) -> None:
-        text = card.text[len(card.fields[0].text) :].strip()
-        head, closing, rest = text.partition(")")
+    def _own_functions(self, body: Body) -> Iterator[tuple[str, Function]]:
+        for item in body.items:
+            if isinstance(item, Branches):
+                for _, branch in item.branches:
+                    yield from self._own_functions(branch)
+            elif item.kind == ".func":
+                start = item.fields[0].end
+                yield from self._function(item, Field(item.text[start:], start, len(item.text)))
+            elif item.kind == ".param":
+                for name, value in words_of(item).pairs.items():
+                    if "(" in name:
+                        text = f"{name} {value.text}"
+                        yield from self._function(item, Field(text, value.start, value.end))
+
+    def _function(self, card: Card, field: Field) -> Iterator[tuple[str, Function]]:
+        """A function by its text, `f(x,y) {x*y}`."""
+        head, closing, rest = field.text.strip().partition(")")
         name, opening, names = head.partition("(")
         expression = rest.strip().removeprefix("=").strip()
         if not opening or not closing or not expression:
@@ -130,17 +155,17 @@ class _Elaboration:
         parameters = tuple(n.strip().lower() for n in names.split(",") if n.strip())
         inside = braced(expression)
         try:
-            body = parse(expression if inside is None else inside)
+            yield name.strip().lower(), Function(parameters, parse(expression if inside is None else inside))
         except ExpressionError as error:
             self.problems.expression(error, card, card.fields[-1], [])
-            return
-        self.functions[name.strip().lower()] = Function(parameters, body)
 
-    def _parameters(self, body: Body, scope: Scope) -> None:
+    def _parameters(self, body: Body, scope: Scope, given: Collection[str] = ()) -> None:
+        """The parameters that a body defines; given: those that the instance's card has defined, which win."""
         for card in self._cards(body, scope):
-            if card.kind == ".param" and "(" not in card.text.split("=")[0]:
+            if card.kind == ".param":
                 for name, value in words_of(card).pairs.items():
-                    scope.define(name, card, value)
+                    if "(" not in name and name not in given:
+                        scope.define(name, card, value)
         scope.settle()
 
     def _cards(self, body: Body, scope: Scope) -> Iterator[Card]:
@@ -189,6 +214,7 @@ class _Elaboration:
                     f"`{card.fields[0].text}` is not evaluated",
                 )
             return
+        self._node_names(card)
         earlier = seen.setdefault(card.name, card)
         if earlier is not card:
             self.problems.say(
@@ -208,9 +234,22 @@ class _Elaboration:
         if maker is not None:
             plan.order.append(maker)
 
+    def _node_names(self, card: Card) -> None:
+        """Nodes with braces or quotes in their names, as in `net{slash}a`: an expression to ngspice."""
+        if "{" not in card.text and "'" not in card.text:
+            return
+        plain = words_of(card).plain
+        for word in plain[:-1] if card.kind == "x" else plain[:2]:
+            if "{" in word.text or "'" in word.text:
+                self.problems.say(
+                    "undefined-parameter", "error", card, word,
+                    f"`{word.text}`: ngspice takes what stands in braces or quotes for an expression, "
+                    "in a node's name too", "rename the node",
+                )  # fmt: skip
+
     def _call(self, card: Card) -> _Call | None:
         words: Words = words_of(card)
-        plain = tuple(w for w in words.plain if w.key not in ("params:", "params", "param:"))
+        plain = tuple(w for w in opened(words.plain) if w.key not in ("params:", "params", "param:"))
         if not plain:
             self.problems.say("syntax", "error", card, None, f"`{card.text[:60]}` names no subcircuit")
             return None
@@ -248,22 +287,28 @@ class _Elaboration:
             return
         path = (*context.path, name)
         scope = context.scope
-        if (
-            definition.defaults
-            or call.arguments
-            or any(not isinstance(i, Card) or i.kind == ".param" for i in definition.body.items)
-        ):
-            scope = Scope(context.scope, self.functions, self.problems)
+        functions = self._functions(definition.body)
+        inside = any(not isinstance(i, Card) or i.kind == ".param" for i in definition.body.items)
+        many = context.many
+        multiplied = call.subckt.key in self.multiplied and "m" not in definition.defaults
+        if definition.defaults or call.arguments or inside or multiplied or functions is not scope.functions:
+            scope = Scope(context.scope, functions, self.problems)
             for key, value in definition.defaults.items():
                 if key not in call.arguments:
                     scope.define(key, definition.card, value)
             for key, value in call.arguments.items():
                 scope.define(key, call.card, value, context.scope)
-            self._parameters(definition.body, scope)
+            self._parameters(definition.body, scope, call.arguments)
+            if multiplied:
+                if many is None:
+                    many = (scope.quiet("m") if "m" in call.arguments else None) or 1.0
+                scope.set("m", many)
         identity = (id(definition), scope.values() if scope is not context.scope else (), context.key)
         pins = dict(zip(definition.pins, nodes, strict=True))
         bodies = (definition.body, *context.bodies)
-        inner = Context(name + ".", path, pins, self.everywhere, scope, bodies, self.problems, identity)
+        inner = Context(
+            name + ".", path, pins, self.everywhere, scope, bodies, self.problems, identity, self.nominal, many
+        )
         local = self._local(definition, inner, (*active, definition.name))
         self.instances.append(
             Instance(
@@ -298,6 +343,17 @@ class _Elaboration:
                 f"{len(definition.pins)} pins: {' '.join(definition.pins)}", "give each pin one node",
             )  # fmt: skip
             return "wrong number of nodes"
+        given = [key for key in call.arguments if key != "m"]
+        if (
+            given
+            and not definition.defaults
+            and not any(not isinstance(item, Card) or item.kind == ".param" for item in definition.body.items)
+        ):
+            self.problems.say(
+                "undefined-parameter", "error", call.card, call.arguments[given[0]],
+                f"subcircuit `{definition.name}` has no parameters, so ngspice refuses `{given[0]}=`",
+                "delete it, or declare the parameter on the `.subckt` card",
+            )  # fmt: skip
         if definition.name in active or len(active) >= DEEPEST_INSTANCE:
             self.problems.say(
                 "syntax", "error", call.card, call.subckt,

@@ -1,66 +1,98 @@
 """R, C, L and K cards to elements."""
 
-from collections.abc import Callable
+import re
+from collections.abc import Callable, Mapping
 from typing import Literal
 
 from xcheck.circuit.elements import Behaviour, Coupling, Device, Element, Origin, Passive
+from xcheck.circuit.trees import Binary, Constant
 from xcheck.deck.cards import Card, Field
 from xcheck.elaboration.affine import probes_in
 from xcheck.elaboration.context import Amount, Context, is_value
 from xcheck.elaboration.expressions import ExpressionError
+from xcheck.elaboration.geometry import MISSING_OHM, factor, value_by_model
+from xcheck.elaboration.models import definition_of
 from xcheck.elaboration.problems import Problems
 from xcheck.elaboration.resolution import resolved
-from xcheck.elaboration.words import Words, words_of
+from xcheck.elaboration.words import Words, opened, words_of
 
 Maker = Callable[[Context], Element | None]
 
-MISSING_OHM = 1e-3
-"""What ngspice 39 takes for a resistor without a value, or of zero ohm."""
 UNIT = {"r": "ohm", "c": "farad", "l": "henry"}
-NOMINAL_CELSIUS = 27.0
+PARAMETERS = ("m", "tc1", "tc2", "tce", "temp", "dtemp", "scale", "w", "l", "ac")
 
 
 def passive(card: Card, problems: Problems) -> Maker | None:
     """A resistor, capacitor or inductor: `R1 a b 10k`, `R1 a b {x} tc1=1m m=2`, `R1 a b model w=..`."""
     words = words_of(card)
     kind: Literal["r", "c", "l"] = card.kind  # type: ignore[assignment]  # the caller chose by the letter
-    if len(words.plain) < 2:
+    plain = opened(words.plain[:1]) + words.plain[1:]
+    if len(plain) < 2:
         problems.say("syntax", "error", card, None, f"`{card.text[:60]}`: two nodes are wanted")
         return None
-    nodes = (words.plain[0].key, words.plain[1].key)
-    rest = words.plain[2:]
+    nodes = (plain[0].key, plain[1].key)
+    rest = plain[2:]
     value = _value_field(kind, rest, words)
     amount = Amount(card, value) if value is not None else None
-    pairs = {key: Amount(card, f) for key, f in words.pairs.items() if key in ("m", "tc1", "tc2", "temp")}
+    own = _own_parameters(card, words)
+    cards: dict[int, dict[str, Amount]] = {}
 
     def make(context: Context) -> Element | None:
         ends = (context.node(nodes[0]), context.node(nodes[1]))
         origin = Origin(card, context.path)
         name = context.name(card)
+        written = {key: parameter.at(context) for key, parameter in own.items()}
+        if context.many is not None:
+            written["m"] = context.many
+        model = next((f for f in rest if not is_value(f) and context.model(f.key) is not None), None)
+        definition = definition_of(model.key, context, cards) if model is not None else None
+        number: float | None
         if amount is None or (value is not None and not is_value(value) and not context.scope.knows(value.key)):
-            return _by_model(card, kind, rest, ends, context)
-        if amount.tree is not None and (probes := probes_in(amount.tree)):
+            if definition is None:
+                return _without_value(card, kind, rest, ends, context)
+            number = value_by_model(kind, written.get, definition)
+            if number is None:
+                return Device(name, kind, ends, (), definition.name, "geometry model", origin, definition=definition)
+        elif amount.tree is not None and (probes := probes_in(amount.tree)):
             sensing = tuple(context.node(n) for letter, ns in probes if letter == "v" for n in ns)
-            return Device(name, kind, ends, sensing, "", "expression", origin, _behaviour(kind, amount, context))
-        ohms = amount.at(context)
-        if ohms is None:
+            behaviour = _behaviour(kind, amount, context, written)
+            return Device(name, kind, ends, sensing, "", "expression", origin, behaviour)
+        else:
+            number = amount.at(context)
+        if number is None:
             return Device(name, kind, ends, (), "", "value unknown", origin)
-        ohms *= _temperature_factor(kind, pairs, context)
-        times = pairs["m"].at(context) if "m" in pairs else None
-        if times:
-            ohms = ohms * times if kind == "c" else ohms / times
-        if kind == "r" and ohms == 0:
-            ohms = MISSING_OHM
-        return Passive(name, kind, ends, ohms, origin)
+        if kind == "r" and number == 0:
+            number = MISSING_OHM
+        times = factor(kind, written.get, definition, context.scope.lookup("temper"), context.nominal)
+        if kind == "r" and written.get("ac") is not None:
+            both = (("r", number * times), ("ac", written["ac"] or 0.0))
+            return Device(name, kind, ends, (), "", "resistance of its own at AC", origin, parameters=both)
+        return Passive(name, kind, ends, number * times, origin)
 
     return make
 
 
-def _behaviour(kind: str, amount: Amount, context: Context) -> Behaviour | None:
-    """What a behavioural resistor or capacitor computes, None where its expression cannot be resolved."""
+def _own_parameters(card: Card, words: Words) -> dict[str, Amount]:
+    """The element's parameters beside its value; `tc=1m 2u` are two of them."""
+    own = {key: Amount(card, field) for key, field in words.pairs.items() if key in PARAMETERS}
+    if "tc" in words.pairs:
+        field = words.pairs["tc"]
+        for key, part in zip(("tc1", "tc2"), re.finditer(r"[^\s,]+", field.text), strict=False):
+            own[key] = Amount(card, Field(part.group(), field.start + part.start(), field.start + part.end()))
+    return own
+
+
+def _behaviour(kind: str, amount: Amount, context: Context, written: Mapping[str, float | None]) -> Behaviour | None:
+    """What a behavioural resistor or capacitor computes, None where its expression cannot be resolved. ngspice
+    heeds the deck's temperature there, not the element's own (seen on version 39)."""
+    known = {key: value for key, value in written.items() if key in ("m", "tc1", "tc2")}
+    times = factor(kind, known.get, None, context.scope.lookup("temper"), context.nominal)
     try:
         if amount.tree is not None and kind in "rc":
-            return Behaviour("r" if kind == "r" else "c", resolved(amount.tree, context))
+            tree = resolved(amount.tree, context)
+            if times != 1:
+                tree = Binary("*", Constant(times), tree)
+            return Behaviour("r" if kind == "r" else "c", tree)
     except ExpressionError as error:
         context.problems.expression(error, amount.card, amount.field, context.scope.names())
     return None
@@ -76,7 +108,7 @@ def _value_field(kind: str, rest: tuple[Field, ...], words: Words) -> Field | No
     return rest[0] if rest else None
 
 
-def _by_model(
+def _without_value(
     card: Card, kind: Literal["r", "c", "l"], rest: tuple[Field, ...], ends: tuple[str, str], context: Context
 ) -> Element:
     name, origin = context.name(card), Origin(card, context.path)
@@ -88,35 +120,24 @@ def _by_model(
         )  # fmt: skip
         return Passive(name, kind, ends, MISSING_OHM if kind == "r" else 0.0, origin)
     model = rest[0]
-    if context.model(model.key) is None:
-        known = context.model_names() + context.scope.names()
-        context.problems.unknown_model(card, model, known, "model or parameter")
-        return Device(name, kind, ends, (), model.key, "value unknown", origin)
-    return Device(name, kind, ends, (), model.key, "geometry model", origin)
-
-
-def _temperature_factor(kind: str, pairs: dict[str, Amount], context: Context) -> float:
-    """1 + tc1 dT + tc2 dT^2 with dT from 27 degrees Celsius, as in the ngspice manual's resistor chapter."""
-    if "tc1" not in pairs and "tc2" not in pairs:
-        return 1.0
-    celsius = pairs["temp"].at(context) if "temp" in pairs else context.scope.lookup("temper")
-    delta = (celsius if celsius is not None else NOMINAL_CELSIUS) - NOMINAL_CELSIUS
-    first = (pairs["tc1"].at(context) or 0.0) if "tc1" in pairs else 0.0
-    second = (pairs["tc2"].at(context) or 0.0) if "tc2" in pairs else 0.0
-    return 1.0 + first * delta + second * delta**2
+    known = context.model_names() + context.scope.names()
+    context.problems.unknown_model(card, model, known, "model or parameter")
+    return Device(name, kind, ends, (), model.key, "value unknown", origin)
 
 
 def coupling(card: Card, problems: Problems) -> Maker | None:
-    """`K1 L1 L2 0.99`."""
-    words = words_of(card).plain
-    if len(words) != 3:
+    """`K1 L1 L2 0.99` or `K1 L1 L2 k=0.99`."""
+    words = words_of(card)
+    given = [words.pairs[key] for key in ("k", "coeff") if key in words.pairs]
+    fields = (*words.plain, *given)
+    if len(fields) != 3:
         problems.say("syntax", "error", card, None, f"`{card.text[:60]}`: two inductors and a factor are wanted")
         return None
-    amount = Amount(card, words[2])
+    amount = Amount(card, fields[2])
 
     def make(context: Context) -> Element | None:
         factor = amount.at(context)
-        pair = (context.prefix + words[0].key, context.prefix + words[1].key)
+        pair = (context.prefix + fields[0].key, context.prefix + fields[1].key)
         return None if factor is None else Coupling(context.name(card), pair, factor, Origin(card, context.path))
 
     return make

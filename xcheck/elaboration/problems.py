@@ -15,6 +15,7 @@ class Problems:
     def __init__(self) -> None:
         self._found: dict[tuple[str, str, int, int, str], Finding] = {}
         self._left_out: dict[str, int] = {}
+        self._unknown: set[tuple[str, str]] = set()
 
     def say(
         self, rule: str, level: Level, card: Card, field: Field | None, message: str, advice: str = "",
@@ -40,7 +41,10 @@ class Problems:
             self.say("syntax", "error", card, field, f"`{_short(field.text)}`: {error}")
 
     def unknown_model(self, card: Card, field: Field, known: list[str], what: str) -> None:
-        """A name that is defined nowhere, with names like it."""
+        """A name that is defined nowhere, with names like it; said once a name, at the first that uses it."""
+        if (what, field.key) in self._unknown:
+            return
+        self._unknown.add((what, field.key))
         near = get_close_matches(field.key, sorted(set(known)), n=3)
         advice = f"did you mean {' or '.join(f'`{n}`' for n in near)}?" if near else "define it, or include its file"
         self.say("undefined-model", "error", card, field, f"no {what} `{field.text}` is defined", advice)

@@ -67,6 +67,13 @@ class Scope:
             return self.parent.lookup(name)
         raise KeyError(name)
 
+    def quiet(self, name: str) -> float | None:
+        """The value of a parameter, None where it has none."""
+        try:
+            return self.lookup(name)
+        except (KeyError, ExpressionError):
+            return None
+
     def settle(self) -> None:
         """Evaluates all that waits, so that a fault is said even where nothing uses the parameter."""
         for name in list(self._waiting):
