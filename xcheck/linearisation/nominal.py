@@ -15,7 +15,7 @@ from xcheck.linearisation.semiconductors import NoEquivalent, equivalent
 TRANSISTOR = {"gm": 1e-3, "vds": 1.0, "vgs": -1.0, "vgd": -1.0, "gds": 1e-8, "go": 1e-8, "gpi": 1e-5}
 """S and V; conductances and capacitances that are not named are too small to count."""
 BLOCKED_SIEMENS = 1e-12
-DIODE_SIEMENS = 1e-6
+DIODE_SIEMENS = 1e-8
 """Between that of a clamp, which is off, and that of a diode that carries a bias."""
 
 

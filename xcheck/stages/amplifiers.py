@@ -28,6 +28,8 @@ from xcheck.stages.supplies import SupplyLevels
 from xcheck.stages.types import Amplifier, OpenLoop
 from xcheck.stages.weighing import AT_THE_POINT, IN_PRINCIPLE, LINEAR, Evidence, Written, weigh
 
+LEAST_NOMINAL_GAIN = 100.0
+"""Where nominal values stand for devices: a gain is then no size, only a sign that there is a way."""
 LEAST_BALANCE = 0.5
 """Of the gain from one input against that from the other, in a model of transistors."""
 LEAST_NAMED_GAIN = 10.0
@@ -118,7 +120,7 @@ class _Search:
         if not is_nonlinear(instance):
             return found, LINEAR
         if found is None or not _is_differential(found):
-            found = self._fitting(instance, named, structure.in_principle(instance, named, LEAST_GAIN))
+            found = self._fitting(instance, named, structure.in_principle(instance, named, LEAST_NOMINAL_GAIN))
             return found if found is not None and _is_differential(found) else None, IN_PRINCIPLE
         return found, AT_THE_POINT
 

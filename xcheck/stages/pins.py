@@ -77,10 +77,32 @@ def roles_by_comment(pins: Sequence[str], comments: Sequence[Comment]) -> dict[R
     and the output."""
     texts = [c.text.replace("|", " ").strip().lower() for c in comments]
     texts = [text for text in texts if not text.startswith("xcheck:")]
-    told = [_roles_of(items, pins) for items in _one_line(texts, len(pins))]
+    told = [_by_bars([c.text.lower() for c in comments], pins)]
+    told += [_roles_of(items, pins) for items in _one_line(texts, len(pins))]
     told.append(_by_pin(texts, pins))
     told += [_roles_of(items, pins) for items in _in_order(texts, len(pins))]
     return next((roles for roles in told if set(SIGNAL) <= roles.keys()), {})
+
+
+def _by_bars(texts: Sequence[str], pins: Sequence[str]) -> dict[Role, str]:
+    """Roles from columns of bars, one role a line: as many bars stand before its words as pins before its own, or as
+    many behind them as pins behind it."""
+    before: dict[Role, int] = {}
+    behind: dict[Role, int] = {}
+    for text in texts:
+        words = HEADING.sub(" ", text).strip(" |!:\t")
+        role = _role_of(words) if words else None
+        if role is None:
+            continue
+        if role in before:
+            return {}
+        start = text.index(words.split()[0]) if "|" not in words and "!" not in words else 0
+        before[role] = sum(text[:start].count(bar) for bar in "|!")
+        behind[role] = sum(text[start:].count(bar) for bar in "|!")
+    for counts, places in ((before, pins), (behind, pins[::-1])):
+        if len(set(counts.values())) == len(counts) > 2 and max(counts.values()) < len(pins):
+            return {role: places[count] for role, count in counts.items()}
+    return {}
 
 
 def _one_line(texts: Sequence[str], count: int) -> list[list[str]]:
