@@ -1,8 +1,8 @@
 """Nonlinear op-amp models of the project's own, by published methods, with any names for their pins.
 
 bipolar, jfet: after Boyle, Cohn, Pederson and Solomon, Macromodeling of integrated circuit operational amplifiers, IEEE
-JSSC SC-9 (1974); cmos: behavioural sources, clipped at the supplies; transistors: two gain stages of MOS transistors with
-Miller's capacitor; railed: a linear op-amp with diodes to the supplies.
+JSSC SC-9 (1974); cmos: behavioural sources, clipped at the supplies; transistors: two gain stages of MOS transistors
+with a capacitor by Miller; railed: a linear op-amp with diodes to the supplies.
 """
 
 BODIES = {

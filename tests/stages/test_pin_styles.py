@@ -1,5 +1,5 @@
-"""Pins of nonlinear models in the orders and with the comments that are met in the field (common practice), with ngspice
-and without it."""
+"""Pins of nonlinear models in the orders and with the comments that are met in the field (common practice), with
+ngspice and without it."""
 
 import pytest
 
@@ -51,7 +51,7 @@ STYLES: dict[str, tuple[str, str, dict[str, str]]] = {
     "output third": ("", "inp inn out vdd vss", {"p": "inp", "n": "inn", "o": "out", "vp": "vdd", "vn": "vss"}),
     "inverting first": ("", "in- in+ v+ v- out", {"p": "in+", "n": "in-", "o": "out", "vp": "v+", "vn": "v-"}),
     "supplies first": ("", "vcc vee in+ in- out", {"p": "in+", "n": "in-", "o": "out", "vp": "vcc", "vn": "vee"}),
-    "negative supply first": ("", "non inv vee vcc out", {"p": "non", "n": "inv", "o": "out", "vp": "vcc", "vn": "vee"}),
+    "negative supply first": ("", "non inv vee vcc o", {"p": "non", "n": "inv", "o": "o", "vp": "vcc", "vn": "vee"}),
     "output first": ("", "vo ip im vp vn", {"p": "ip", "n": "im", "o": "vo", "vp": "vp", "vn": "vn"}),
     "numbered list": (
         "* 1: output\n* 2: negative supply\n* 3: non-inverting input\n* 4: inverting input\n* 5: positive supply",
