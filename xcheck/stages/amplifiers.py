@@ -8,6 +8,7 @@ import numpy as np
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance
 from xcheck.finding import Finding
 from xcheck.stages.bare import bare_amplifiers
+from xcheck.stages.boosters import with_boosters
 from xcheck.stages.directives import PinDirective, pin_directives
 from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins
 from xcheck.stages.model import LinearModel, bench, measured, open_loop
@@ -45,7 +46,7 @@ def find_amplifiers(
     written: the circuit as the deck has it, where `circuit` is the same at its operating point."""
     directives, findings = pin_directives(circuit)
     search = _Search(circuit, written or circuit, directives)
-    amplifiers = search.run()
+    amplifiers = with_boosters(search.run(), circuit, written or circuit, search.held.still)
     return amplifiers, (*findings, *search.findings)
 
 

@@ -34,6 +34,10 @@ class Draughtsman:
         self.by_name = partition.circuit.by_name
         self.soft = frozenset(node for node in partition.references if node not in partition.ac_ground)
 
+    def devices(self, stage: Stage) -> list[str]:
+        """The elements of a stage that cannot be drawn because they are not linear."""
+        return [name for name in stage.elements if isinstance(self.by_name[name], Device)]
+
     def draw(self, stage: Stage, frequency: Real, left_out: Collection[str] = ()) -> Drawing | str:
         """The drawing of a stage with one amplifier over frequency (Hz, shape (F,)), or why there is none.
         left_out: elements not to be drawn."""

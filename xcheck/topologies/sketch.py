@@ -75,8 +75,19 @@ def is_capacitive(branch: Branch) -> bool:
 
 
 def sketch(draughtsman: Draughtsman, stage: Stage, band: tuple[float, float]) -> Sketch:
-    """The places of a stage, judged at mid band (the geometric mean, Hz)."""
-    drawing = draughtsman.draw(stage, np.array([np.sqrt(band[0] * band[1])]))
+    """The places of a stage, judged at mid band (the geometric mean, Hz). What is not linear is left out where the
+    rest closes the loop: protection, clamps."""
+    middle = np.array([np.sqrt(band[0] * band[1])])
+    drawing = draughtsman.draw(stage, middle)
+    if isinstance(drawing, str):
+        devices = draughtsman.devices(stage)
+        rest = draughtsman.draw(stage, middle, devices) if devices else drawing
+        drawn = _sketch(draughtsman, rest)
+        return drawn if drawn.closed and not drawn.why_not else Sketch(why_not=drawing)
+    return _sketch(draughtsman, drawing)
+
+
+def _sketch(draughtsman: Draughtsman, drawing: Drawing | str) -> Sketch:
     if isinstance(drawing, str):
         return Sketch(why_not=drawing)
     n, p, o = drawing.inverting, drawing.non_inverting, drawing.output
