@@ -13,8 +13,8 @@ MODULES = {
     for path in sorted(PACKAGE.rglob("*.py"))
 }
 FLOW = """
-    version errors place finding options notation deck circuit elaboration linearisation stages topologies impedance
-    simulate frame reviewed rules report directives grid reviewing cli __main__
+    version errors place finding options notation parts deck circuit elaboration linearisation stages topologies
+    impedance simulate frame reviewed rules report directives grid reviewing cli __main__
 """
 ORDER = tuple(FLOW.split())
 """The data flow: a part imports only parts before it."""

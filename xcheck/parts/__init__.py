@@ -1,0 +1,1 @@
+"""Data sheets of common amplifiers: data in TOML, read by `catalogue`."""
