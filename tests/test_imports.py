@@ -14,7 +14,7 @@ MODULES = {
 }
 FLOW = """
     version errors place finding options notation parts deck circuit elaboration linearisation stages topologies
-    impedance simulate frame reviewed rules report directives grid reviewing cli __main__
+    impedance simulate results frame reviewed rules report directives grid reviewing cli __main__
 """
 ORDER = tuple(FLOW.split())
 """The data flow: a part imports only parts before it."""

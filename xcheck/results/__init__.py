@@ -1,0 +1,1 @@
+"""Simulation results that the user already has."""
