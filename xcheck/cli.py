@@ -129,6 +129,12 @@ def main() -> None:
     "--fail-on", type=click.Choice([*LEVELS, "never"]), default="error", show_default=True,
     help="Exit with 1 where a finding of this level or above is made.",
 )  # fmt: skip
+@click.option(
+    "--results",
+    type=click.Path(path_type=Path),
+    metavar="FILE",
+    help="Take simulated values from this raw file of the deck; run no ngspice.",
+)
 @ENGINE
 @_shared
 def review(decks: tuple[Path, ...], form: str, out: Path | None, fail_on: str, **settings: Any) -> None:

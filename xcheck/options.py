@@ -9,7 +9,8 @@ EngineChoice = Literal["auto", "ngspice", "none"]
 
 @dataclass(frozen=True, slots=True)
 class Options:
-    """spots, band: Hz; tolerance: relative difference (0.01 is 1 %); band None: as the deck declares."""
+    """spots, band: Hz; tolerance: relative difference (0.01 is 1 %); band None: as the deck declares;
+    results: a raw file to take simulated values from, instead of running ngspice."""
 
     spots: tuple[float, ...] = ()
     band: tuple[float, float] | None = None
@@ -18,3 +19,4 @@ class Options:
     subckt: str | None = None
     include_dirs: tuple[Path, ...] = ()
     ports: tuple[str, ...] = ()
+    results: Path | None = None

@@ -17,11 +17,13 @@ from xcheck.impedance.closed_form import closed_forms
 from xcheck.impedance.return_ratio import return_ratios
 from xcheck.linearisation import Linearised, linearise
 from xcheck.options import Options
+from xcheck.results.formed import impedances
+from xcheck.results.rawfile import read_raw
 from xcheck.reviewed import DeckReview, Evidence, Outcome
 from xcheck.rules import run_rules
 from xcheck.simulate import find_engine, measure
 from xcheck.simulate.operate import QUANTITIES, Operated, operate
-from xcheck.simulate.types import EngineInfo
+from xcheck.simulate.types import EngineInfo, Simulation
 from xcheck.stages import find_amplifiers, split
 from xcheck.topologies import classify
 
@@ -44,6 +46,8 @@ def review(
     """
     options = options or Options()
     decks = _decks_of([paths] if isinstance(paths, (str, Path)) else list(paths))
+    if options.results is not None and len(decks) != 1:
+        raise CallError(f"results are of one deck, and {len(decks)} are to be reviewed; name that one")
     engine = _engine(options)
     reviews = [_review_deck(path, options, engine, progress) for path in decks]
     if len(reviews) == 1 and reviews[0].unreadable:
@@ -66,6 +70,8 @@ def _decks_of(paths: list[str | Path]) -> list[Path]:
 
 
 def _engine(options: Options) -> EngineInfo:
+    if options.results is not None:
+        return EngineInfo(available=False, reason=f"simulated values are taken from {options.results}")
     if options.engine == "none":
         return EngineInfo(available=False, reason="not asked for (engine none)")
     engine = find_engine()
@@ -96,11 +102,19 @@ def analyse(
     amplifiers, amplifier_findings = find_amplifiers(linear.circuit, circuit)
     partition = split(linear.circuit, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
     frequency = comparison_grid(circuit.analyses, options.spots)
+    formed = None
+    if options.results is not None:
+        formed = impedances(read_raw(options.results), circuit, partition)
+        frequency = formed.frequency
+        if not frequency.size:
+            raise CallError(f"{options.results} holds no AC plot with a frequency above zero; save an `.ac` run")
     recognised = {stage.name: classify(partition, stage, band=in_band) for stage in partition.stages}
     roads = return_ratios(partition, frequency)
     forms = closed_forms(partition, frequency, band=in_band)
     simulation = None
-    if engine.available and any(stage.ports for stage in partition.stages):
+    if formed is not None:
+        simulation = Simulation(engine, formed.values, formed.not_formed)
+    elif engine.available and any(stage.ports for stage in partition.stages):
 
         def tell(done: int, total: int) -> None:
             if progress is not None:
