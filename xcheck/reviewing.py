@@ -9,6 +9,7 @@ from xcheck.deck.cards import Deck
 from xcheck.deck.reader import read_deck
 from xcheck.directives import band_of
 from xcheck.elaboration import elaborate
+from xcheck.elaboration.unused import unused_as_notes
 from xcheck.errors import CallError, DeckUnreadable, EngineError
 from xcheck.finding import Finding
 from xcheck.grid import DEFAULT_BAND, comparison_grid
@@ -143,7 +144,8 @@ def analyse(
         band_declared=band is not None,
         options=options,
     )
-    findings = (*deck.findings, *circuit.findings, *refusals, *partition.findings, *run_rules(evidence))
+    read = unused_as_notes(deck.findings, circuit, options.subckt)
+    findings = (*read, *circuit.findings, *refusals, *partition.findings, *run_rules(evidence))
     return evidence, _in_order(findings)
 
 

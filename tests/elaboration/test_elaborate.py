@@ -12,6 +12,7 @@ from xcheck.circuit.elements import Circuit, Controlled, Device, Passive
 from xcheck.deck.reader import read_text
 from xcheck.elaboration import elaborate
 from xcheck.elaboration.expressions import ExpressionError, parse
+from xcheck.elaboration.unused import unused_as_notes
 from xcheck.errors import CallError
 
 
@@ -117,6 +118,23 @@ def test_what_is_not_linear_is_kept_as_a_device(card: str) -> None:
 def test_a_fault_is_told_at_its_place(body: str, rule: str, line: int, column: int) -> None:
     found = [(f.rule, f.place.line, f.place.column) for f in circuit_of(body).findings]
     assert (rule, line, column) in found
+
+
+def test_what_is_defined_nowhere_is_told_once_a_name() -> None:
+    circuit = circuit_of("x1 a 0 none\nx2 a 0 none\nx3 a 0 nil\nd1 a 0 none\nd2 a 0 none\n")
+    found = [(f.rule, f.place.line, f.subject) for f in circuit.findings]
+    assert found == [("undefined-model", 2, "x1"), ("undefined-model", 4, "x3"), ("undefined-model", 5, "d1")]
+
+
+def test_faults_in_unused_subcircuits_are_notes() -> None:
+    broken = ".subckt {name} a\nr1 a 0 {{1\n#x\n.ends\n"
+    deck = read_text("t\n" + broken.format(name="u") + broken.format(name="s") + "x1 a s\nr1 a 0 {2\n.end\n")
+    findings = unused_as_notes(deck.findings, elaborate(deck))
+    assert [(f.place.line, f.level) for f in findings] == [
+        (3, "note"), (4, "note"), (7, "error"), (8, "error"), (11, "error"),
+    ]  # fmt: skip
+    on_its_own = unused_as_notes(deck.findings, elaborate(deck, "u"), "U")
+    assert [f.level for f in on_its_own][:2] == ["error", "error"]
 
 
 def test_a_block_by_its_name() -> None:

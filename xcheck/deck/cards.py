@@ -92,9 +92,8 @@ class Directive:
 class Deck:
     """A deck as read: includes and library sections written in place, parameters not yet evaluated.
 
-    path: as the user gave it; title: the first line; cards: in the order in which ngspice reads them, up to
-    `.end`; after_end: cards after `.end`, kept but not part of the circuit; text_lines: number of physical
-    lines read, over all files.
+    path: as the user gave it; title: the first line; cards: in the order in which ngspice reads them, those
+    after `.end` among them; text_lines: number of physical lines read, over all files.
     """
 
     path: str
@@ -102,7 +101,6 @@ class Deck:
     cards: tuple[Card, ...]
     comments: tuple[Comment, ...] = ()
     directives: tuple[Directive, ...] = ()
-    after_end: tuple[Card, ...] = ()
     findings: tuple[Finding, ...] = ()
     files: tuple[str, ...] = ()
     text_lines: int = 0

@@ -4,7 +4,9 @@ import re
 
 from xcheck.deck.cards import Field
 
-_PLAIN = re.compile(r"[^\s,]+")
+BLANKS = " \t\r\n\f\v"
+"""What separates words; to ngspice a no-break space is part of one."""
+_PLAIN = re.compile(r"[^ \t\r\n\f\v,]+")
 _SPECIAL = re.compile(r"[=(){}'\"]")
 _CLOSING = {"(": ")", "{": "}"}
 
@@ -28,7 +30,7 @@ def fields_of(text: str) -> tuple[Field, ...]:
         character = text[position]
         if character == "=" and start >= 0 and text[position - 1] in "<>!":
             position += 1
-        elif character.isspace() or character in ",=":
+        elif character in BLANKS or character in ",=":
             if start >= 0:
                 fields.append(Field(text[start:position], start, position))
                 start = -1

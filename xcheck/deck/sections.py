@@ -5,7 +5,7 @@ from collections.abc import Sequence
 
 def _words(line: str) -> list[str]:
     low = line.lstrip()[:200].lower()
-    return low.split() if low.startswith((".lib", ".endl")) else []
+    return [word.strip("\"'") for word in low.split()] if low.startswith((".lib", ".endl")) else []
 
 
 def section_names(lines: Sequence[str]) -> list[str]:

@@ -13,10 +13,12 @@ LONGEST_LINE = 100_000
 
 @dataclass(frozen=True, slots=True)
 class Text:
-    """Physical lines of a file without their ends; remarks: what was odd, with 1-based line numbers."""
+    """Physical lines of a file without their ends; remarks: what was odd, with 1-based line numbers; latin: whether
+    it was read as Latin-1, being no UTF-8."""
 
     lines: tuple[str, ...]
     remarks: tuple[tuple[int, str], ...] = ()
+    latin: bool = False
 
 
 class Unreadable(Exception):
@@ -47,7 +49,9 @@ def _bytes_of(path: Path, most_bytes: int) -> bytes:
 def lines_of(data: bytes) -> Text:
     """Decodes (UTF-8, UTF-16 with its mark, else Latin-1) and splits at line ends."""
     remarks: list[tuple[int, str]] = []
-    text = _decode(data, remarks)
+    text, latin = _decode(data, remarks)
+    if "\r" in text and "\n" not in text and text.strip("\r"):
+        remarks.append((1, "lines end with a carriage return alone: ngspice takes the whole file for one line"))
     lines = text.replace("\r\n", "\n").replace("\r", "\n").split("\n")
     if lines and lines[-1] == "":
         lines.pop()
@@ -60,16 +64,17 @@ def lines_of(data: bytes) -> Text:
         elif len(line) > LONGEST_LINE:
             remarks.append((number, f"a line of {len(line)} characters, read up to character {LONGEST_LINE}"))
             lines[number - 1] = line[:LONGEST_LINE]
-    return Text(tuple(lines), tuple(remarks))
+    return Text(tuple(lines), tuple(remarks), latin)
 
 
-def _decode(data: bytes, remarks: list[tuple[int, str]]) -> str:
+def _decode(data: bytes, remarks: list[tuple[int, str]]) -> tuple[str, bool]:
+    """The text, and whether it was read as Latin-1."""
     if data[:2] in (b"\xff\xfe", b"\xfe\xff"):
         remarks.append((1, "UTF-16 text, which ngspice does not read; save it as UTF-8"))
-        return data.decode("utf-16", errors="replace")
+        return data.decode("utf-16", errors="replace"), False
     if data[:3] == b"\xef\xbb\xbf":
         data = data[3:]
     try:
-        return data.decode("utf-8")
+        return data.decode("utf-8"), False
     except UnicodeDecodeError:
-        return data.decode("latin-1")
+        return data.decode("latin-1"), True

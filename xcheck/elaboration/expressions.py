@@ -26,7 +26,7 @@ class ExpressionError(Exception):
 
 
 _TOKEN = re.compile(
-    r"\s*(?:(?P<number>(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?[a-zA-Zµ]*)"
+    r"\s*(?:(?P<number>(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?[^\W\d_]*)"
     r"|(?P<name>[a-zA-Z_$\\][\w.$#\[\]\\]*)"
     r"|(?P<operator>\*\*|==|!=|<>|<=|>=|&&|\|\||[-+*/^%<>=!&|?:(),~]))"
 )

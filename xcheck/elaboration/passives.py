@@ -44,6 +44,7 @@ def passive(card: Card, problems: Problems) -> Maker | None:
         written = {key: parameter.at(context) for key, parameter in own.items()}
         if context.many is not None:
             written["m"] = context.many
+        _strange_words(card, rest, value, context)
         model = next((f for f in rest if not is_value(f) and context.model(f.key) is not None), None)
         definition = definition_of(model.key, context, cards) if model is not None else None
         number: float | None
@@ -70,6 +71,18 @@ def passive(card: Card, problems: Problems) -> Maker | None:
         return Passive(name, kind, ends, number * times, origin)
 
     return make
+
+
+def _strange_words(card: Card, rest: tuple[Field, ...], value: Field | None, context: Context) -> None:
+    """Says which words ngspice refuses: those that are no value, model or parameter, as in `r1 a b 10 ohm`."""
+    for field in rest if len(rest) > 1 else ():
+        known = context.model(field.key) is not None or context.scope.knows(field.key)
+        if field is not value and not is_value(field) and not known:
+            context.problems.say(
+                "syntax", "error", card, field, f"`{field.text}` is no value and no model, so ngspice refuses the deck",
+                "delete it, or join it to the number before it",
+            )  # fmt: skip
+            return
 
 
 def _own_parameters(card: Card, words: Words) -> dict[str, Amount]:

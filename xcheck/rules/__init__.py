@@ -25,8 +25,8 @@ __all__ = ["RULES", "Rule", "run_rules"]
 
 RULES: tuple[Rule, ...] = (
     # how the text is read
-    Rule("syntax", "error", "a line that is no card, a missing field, an unbalanced brace or quote"),
-    Rule("file-missing", "error", "an included file or library section that is not there"),
+    Rule("syntax", "error", "a line that is no card, a missing field, an unbalanced brace", also=("warning", "note")),
+    Rule("file-missing", "error", "an included file or section that is not there", also=("warning",)),
     Rule("include-outside", "error", "an include that leaves the allowed folders"),
     Rule("undefined-model", "error", "a model or subcircuit that is defined nowhere"),
     Rule("undefined-parameter", "error", "an expression with an unknown name"),

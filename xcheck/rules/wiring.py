@@ -142,7 +142,7 @@ def place_of_word(card: Card, word: str) -> Place:
 def observed_nodes(evidence: Evidence) -> set[str]:
     """Nodes whose voltage some card asks for (`.save`, `.print`, `.meas`, `.noise` ...)."""
     seen: set[str] = set()
-    for card in (*evidence.deck.cards, *evidence.deck.after_end):
+    for card in evidence.deck.cards:
         if card.kind.startswith(".") and card.kind not in (".param", ".func", ".subckt", ".model"):
             for match in OBSERVED.finditer(card.text):
                 seen.update(name.lower() for name in match.groups() if name)

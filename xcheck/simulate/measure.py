@@ -55,7 +55,7 @@ def measure(
     """
     engine = find_engine() if engine is None else engine
     ports = {port.subject: port for stage in partition.stages for port in stage.ports}
-    sane = harmless(deck.cards, deck.after_end)
+    sane = harmless(deck.cards)
     fault = engine.reason if not engine.available else why_not(sane, circuit)
     if fault:
         return Simulation(

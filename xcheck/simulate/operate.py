@@ -52,7 +52,7 @@ def operate(
     What fails is in the result; nothing is raised.
     """
     engine = find_engine() if engine is None else engine
-    sane = harmless(deck.cards, deck.after_end)
+    sane = harmless(deck.cards)
     fault = engine.reason if not engine.available else why_not(sane, circuit)
     if circuit.boundary:
         fault = "a subcircuit by itself has no operating point"

@@ -41,8 +41,8 @@ class Harmless:
     left_out: tuple[str, ...]
 
 
-def harmless(cards: Sequence[Card], after_end: Sequence[Card] = ()) -> Harmless:
-    """Sorts the cards of a deck by the lists above; nothing after `.end` is handed over."""
+def harmless(cards: Sequence[Card]) -> Harmless:
+    """Sorts the cards of a deck by the lists above."""
     banned = {c.fields[1].key for c in cards if c.kind == ".model" and len(c.fields) > 1 and not _known_model(c)}
     kept: list[Card] = []
     refused: list[Card] = []
@@ -54,7 +54,6 @@ def harmless(cards: Sequence[Card], after_end: Sequence[Card] = ()) -> Harmless:
         else:
             refused.append(card)
     words += [f"{card.place()}: `{_short(card.text)}`" for card in refused]
-    words += [f"{card.place()}: `{_short(card.text)}`, behind `.end`" for card in after_end]
     return Harmless(tuple(kept), tuple(refused), tuple(words))
 
 
