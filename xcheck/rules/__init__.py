@@ -18,7 +18,7 @@ from xcheck.rules.operating_point import (
 )
 from xcheck.rules.rule import Rule, one_a_card
 from xcheck.rules.scales import femto_for_farad, milli_for_mega
-from xcheck.rules.values import comma_in_number, digit_after_suffix
+from xcheck.rules.values import comma_in_number, digit_after_suffix, trailing_text
 from xcheck.rules.wiring import ground_missing, input_without_dc_path, node_dangling
 
 __all__ = ["RULES", "Rule", "run_rules"]
@@ -41,6 +41,7 @@ RULES: tuple[Rule, ...] = (
     Rule("digit-after-suffix", "error", "4k7, 2R2, 1u5: the digit is lost", digit_after_suffix),
     Rule("femto-for-farad", "error", "10F on a capacitor: F is femto", femto_for_farad),
     Rule("comma-in-number", "error", "1,5k: the comma ends the number", comma_in_number),
+    Rule("trailing-text", "note", "text after a number, which is ignored", trailing_text, also=("error",)),
     # how the circuit is wired
     Rule("ground-missing", "error", "no node 0 (or gnd)", ground_missing),
     Rule("node-dangling", "warning", "a node with one terminal that is no port", node_dangling),

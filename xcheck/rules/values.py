@@ -21,6 +21,12 @@ where no scale factor does, and the figures after it."""
 FIGURES_APART = re.compile(r"\d[A-Za-z]+\d")
 """Tells quickly that a card cannot hold such a value."""
 
+USUAL = frozenset("ohm ohms f farad h henry v volt volts a amp amps hz s sec w db deg c \u03c9".split())
+"""What may follow a number without a word, in lower case; the last one is the ohm sign."""
+
+MU = "\u03bc"
+"""The Greek letter; the micro sign, which looks like it, is a scale factor to ngspice 39."""
+
 FIGURES_AFTER_KEY = 2
 """After `key =` more figures than this are rather a part's name (`1n4148`) than a value."""
 
@@ -93,6 +99,46 @@ def comma_in_number(evidence: Evidence) -> Iterator[Finding]:
                 subject=_name(card),
                 advice=f"write {point}, or {whole} if thousands are meant" if thousands else f"write {point}",
             )
+
+
+def trailing_text(evidence: Evidence) -> Iterator[Finding]:
+    """`10k1%`, `100n50V`, `5Vdc`: text after a number is ignored. Nothing is said of usual units, of `10R`, nor
+    where another rule speaks of the word. A Greek mu, of all letters, loses a factor of a million."""
+    for card in evidence.deck.cards:
+        for spot in spots(card):
+            rest = spot.number.rest
+            if not rest or _is_usual(spot, rest) or _in_expression(spot) or _lost(spot) is not None:
+                continue
+            unit = UNITS.get(card.kind, "") if spot.own or card.kind in ("v", "i") else ""
+            read = f"so it is {shortest(spot.number.value, unit)}"
+            if rest[0].lower() == MU and not spot.number.scale:
+                yield Finding(
+                    "trailing-text", "error", spot.place,
+                    f"`{spot.word}` holds the Greek letter mu, which ngspice does not take for micro, {read}",
+                    subject=_name(card), advice=f"write {spot.number.digits}u",
+                )  # fmt: skip
+            elif not (spot.key and not spot.own and not rest.isalpha()):  # there it may be an operator
+                yield Finding(
+                    "trailing-text", "note", spot.place, f"`{spot.word}`: `{rest}` is ignored, {read}",
+                    subject=_name(card), advice="delete it, or put it behind a `;`",
+                )  # fmt: skip
+
+
+def _in_expression(spot: Spot) -> bool:
+    """Whether a number is part of an expression in braces or quotes."""
+    before = spot.card.text[: spot.start]
+    return before.count("{") > before.count("}") or before.count("'") % 2 == 1
+
+
+def _is_usual(spot: Spot, rest: str) -> bool:
+    """Whether what follows a number says nothing else than the number does."""
+    low, scale = rest.lower(), spot.number.scale.lower()
+    if low in USUAL or (low == "r" and spot.card.kind == "r" and not scale):
+        return True
+    if scale == "f" and spot.card.kind == "c":  # `1farad`: told by femto-for-farad where it matters
+        return True
+    figures = LOST.fullmatch(rest)
+    return figures is not None and not figures["figures"].strip("0")  # `5V0`, `1k0`
 
 
 def _name(card: Card) -> str:
