@@ -10,6 +10,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from xcheck.circuit.arrays import Complex, Real
+from xcheck.circuit.elements import Controlled, Element, Passive
 from xcheck.impedance.couplings import Couplings
 from xcheck.impedance.surroundings import Outside, PortImpedance, Surroundings
 from xcheck.impedance.types import ClosedForm
@@ -31,6 +32,14 @@ the neighbour's own value rests on a premise."""
 
 LIMIT_OHM = 1e24
 """At DC, the limit of a small frequency, an impedance above this is infinite and one below its inverse zero."""
+
+
+IDLE = 1e-3
+"""Of the conductances of a transistor: with less transconductance it is a resistance between its terminals."""
+
+
+def _is_gain_of_device(element: Element) -> bool:
+    return isinstance(element, Controlled) and bool(element.origin.device)
 
 
 @dataclass(frozen=True)
@@ -171,9 +180,27 @@ class _Evaluation:
         shared = [name for name in stage.elements if len(self.surroundings.owners[name]) > 1]
         if shared:
             raise NotPlaced(f"`{shared[0]}` belongs to several stages")
+        working = self._working(stage)
+        if working:
+            raise NotPlaced(f"`{working}` amplifies within its network")
         if id(loop.model) not in self.cores:
             self.cores[id(loop.model)] = core_of(loop.model.response(self.surroundings.frequency), self.at)
         return topology, self.cores[id(loop.model)]
+
+    def _working(self, stage: Stage) -> str:
+        """A transistor in the network of a stage that is more than the resistances between its ends, or nothing."""
+        by_name = self.partition.circuit.by_name
+        parts = [by_name[name] for name in stage.elements if by_name[name].origin.device]
+        conductance: dict[str, float] = {}
+        for part in parts:
+            if isinstance(part, Passive) and part.kind == "r" and part.value:
+                device = part.origin.device
+                conductance[device] = max(conductance.get(device, 0.0), 1 / abs(part.value))
+        for part in parts:
+            gains = [abs(t.gain) for t in part.terms] if isinstance(part, Controlled) else []
+            if max(gains, default=0.0) > IDLE * conductance.get(part.origin.device, 0.0):
+                return part.origin.device
+        return ""
 
     def _premises(
         self, stage: Stage, view: PortView, others: list[Port], outsides: Mapping[str, Outside]
@@ -182,6 +209,9 @@ class _Evaluation:
         impedance: it can change everything behind it, and no number is better than a wrong one."""
         loop = stage.amplifiers[0].open_loop
         premises = [] if loop.exact else [loop.reason]
+        by_name = self.partition.circuit.by_name
+        parts = (by_name[name] for name in stage.elements)
+        premises += [f"{e.origin.device} taken without its gain" for e in parts if _is_gain_of_device(e)]
         premises += [f"{node} taken as AC ground" for node in view.drawing.soft]
         if view.drawing.tied:
             premises.append("nodes that a voltage source ties together taken as one")

@@ -164,8 +164,8 @@ def _open_loop(
     inner = _private(amplifier, instance)
     outer = [_renamed(e, {booster.output: OUTPUT}) for e in added]
     elements = [*inner, *outer]
-    nodes = {n for e in elements for n in e.nodes}
-    held = [PLUS, MINUS, *sorted(n for n in nodes if n in still and n != GROUND)]
+    around = {node for _, node in instance.pins} | {n for e in outer for n in e.nodes if ":" not in n}
+    held = [PLUS, MINUS, *sorted(n for n in around if n in still and n != GROUND)]
     try:
         return measured(open_loop(LinearModel(bench(elements, held), PLUS, MINUS, OUTPUT)))
     except (np.linalg.LinAlgError, KeyError):

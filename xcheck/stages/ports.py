@@ -80,9 +80,20 @@ class Pointer:
 def make_port(stage: str, node: str, side: Side, kind: Kind, inside: tuple[Terminal, ...], pointer: Pointer) -> Port:
     """A port with the terminals that are the stage's own."""
     wiring = pointer.wiring
+    inside = _whole_devices(node, inside, wiring)
     mine = sum(conducts(wiring.circuit.by_name[t.element], t.index) for t in inside)
     current = side == "input" and wiring.conducting[node] == mine
     return Port(stage, node, node, side, kind, inside, current, pointer.place(node, side, inside))
+
+
+def _whole_devices(node: str, inside: tuple[Terminal, ...], wiring: Wiring) -> tuple[Terminal, ...]:
+    """The terminals with all that stands for a device on the node where part of it is there: a device's terminal cannot
+    be divided."""
+    devices = {wiring.circuit.by_name[t.element].origin.device for t in inside} - {""}
+    if not devices:
+        return inside
+    rest = (Terminal(e.name, k) for e, k in wiring.on(node) if e.origin.device in devices)
+    return tuple(dict.fromkeys((*inside, *rest)))
 
 
 class _Sides:
@@ -97,6 +108,7 @@ class _Sides:
         self.outputs = {a.output for a in members}
         self.amplifier_inputs = dict.fromkeys(n for a in members for n in (a.non_inverting, a.inverting))
         self.inverting = {a.inverting for a in members}
+        self.supplies = {n for a in wiring.amplifiers for n in (a.positive_supply, a.negative_supply) if n is not None}
 
     def inputs(self, elements: Sequence[Element]) -> Iterator[tuple[str, Kind, str]]:
         """Input nodes with their kind and the name of an element that counts as outside there, '' for none."""
@@ -109,10 +121,18 @@ class _Sides:
         if "signal" not in kinds.values() and not self.wiring.signals:
             kinds.update(dict.fromkeys(self._open_inputs(), "signal"))
         for node, kind in kinds.items():
+            if kind == "reference" and self._is_clamped_to(node):
+                continue
             yield node, kind, ""
             behind = self._behind_series(node) if kind == "signal" else None
             if behind is not None and behind[1] not in kinds:
                 yield behind[1], kind, behind[0].name
+
+    def _is_clamped_to(self, node: str) -> bool:
+        """Whether a node is a supply that only diodes and transistors of the stage are on: no input, if ever so little
+        flows there."""
+        own = [e for e, _ in self.wiring.on(node) if e.name in self.own]
+        return node in self.supplies and bool(own) and all(e.origin.device for e in own)
 
     def _is_own_output(self, node: str) -> bool:
         held = self.wiring.held

@@ -152,7 +152,8 @@ def _is_current(port: Port, branch: Branch, links: Links, circuit: Circuit) -> b
     """Whether an input is a current source's in front of a branch smaller than what lies across the source."""
     if not port.current_driven:
         return False
-    if not any(isinstance(e, (Source, Controlled)) and e.kind in "ifg" for e in circuit.at.get(port.node, ())):
+    near = [e for e in circuit.at.get(port.node, ()) if not e.origin.device]
+    if not any(isinstance(e, (Source, Controlled)) and e.kind in "ifg" for e in near):
         return False
     across = links.between(port.node, GROUND)
     return across is None or abs(across.impedance[0]) > abs(branch.impedance[0])
