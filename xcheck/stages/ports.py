@@ -108,7 +108,6 @@ class _Sides:
         self.outputs = {a.output for a in members}
         self.amplifier_inputs = dict.fromkeys(n for a in members for n in (a.non_inverting, a.inverting))
         self.inverting = {a.inverting for a in members}
-        self.supplies = {n for a in wiring.amplifiers for n in (a.positive_supply, a.negative_supply) if n is not None}
 
     def inputs(self, elements: Sequence[Element]) -> Iterator[tuple[str, Kind, str]]:
         """Input nodes with their kind and the name of an element that counts as outside there, '' for none."""
@@ -121,18 +120,20 @@ class _Sides:
         if "signal" not in kinds.values() and not self.wiring.signals:
             kinds.update(dict.fromkeys(self._open_inputs(), "signal"))
         for node, kind in kinds.items():
-            if kind == "reference" and self._is_clamped_to(node):
+            if kind == "reference" and self._is_clamped_to(node, elements):
                 continue
             yield node, kind, ""
             behind = self._behind_series(node) if kind == "signal" else None
             if behind is not None and behind[1] not in kinds:
                 yield behind[1], kind, behind[0].name
 
-    def _is_clamped_to(self, node: str) -> bool:
+    def _is_clamped_to(self, node: str, elements: Sequence[Element]) -> bool:
         """Whether a node is a supply that only diodes and transistors of the stage are on: no input, if ever so little
         flows there."""
-        own = [e for e, _ in self.wiring.on(node) if e.name in self.own]
-        return node in self.supplies and bool(own) and all(e.origin.device for e in own)
+        if node not in self.wiring.supplies:
+            return False
+        own = [e for e in elements if node in e.nodes]
+        return bool(own) and all(e.origin.device for e in own)
 
     def _is_own_output(self, node: str) -> bool:
         held = self.wiring.held

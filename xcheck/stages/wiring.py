@@ -3,6 +3,7 @@
 from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance, Source
 from xcheck.stages.nodes import Held, is_signal
@@ -59,6 +60,12 @@ class Wiring:
         )  # fmt: skip
         wiring._connect()
         return wiring
+
+    @cached_property
+    def supplies(self) -> frozenset[str]:
+        """The nodes on the amplifiers' supply pins."""
+        rails = (n for a in self.amplifiers for n in (a.positive_supply, a.negative_supply))
+        return frozenset(n for n in rails if n is not None)
 
     def on(self, node: str) -> Sequence[tuple[Element, int]]:
         """The terminals on a node, -1 for sensing."""
