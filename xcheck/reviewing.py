@@ -1,9 +1,10 @@
 """The whole flow, from paths to an outcome: the one place that knows the order of the steps."""
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import replace
 from pathlib import Path
 
+from xcheck.circuit.arrays import Complex, Real
 from xcheck.circuit.elements import Circuit, Device
 from xcheck.deck.cards import Deck
 from xcheck.deck.reader import read_deck
@@ -16,8 +17,10 @@ from xcheck.grid import DEFAULT_BAND, comparison_grid
 from xcheck.impedance.answers import answer_ports
 from xcheck.impedance.closed_form import closed_forms
 from xcheck.impedance.return_ratio import return_ratios
+from xcheck.impedance.types import ReturnRatio
 from xcheck.linearisation import Linearised, linearise
 from xcheck.options import Options
+from xcheck.parts.catalogue import find
 from xcheck.results.formed import impedances
 from xcheck.results.rawfile import read_raw
 from xcheck.reviewed import DeckReview, Evidence, Outcome
@@ -26,6 +29,8 @@ from xcheck.simulate import find_engine, measure
 from xcheck.simulate.operate import QUANTITIES, Operated, operate
 from xcheck.simulate.types import EngineInfo, Simulation
 from xcheck.stages import find_amplifiers, split
+from xcheck.stages.standins import stated, with_stand_ins
+from xcheck.stages.types import Amplifier, Partition
 from xcheck.topologies import classify
 
 DECK_ENDINGS = (".cir", ".ckt", ".net", ".sp", ".spi", ".spice")
@@ -101,7 +106,8 @@ def analyse(
     band = options.band or declared
     in_band = band or DEFAULT_BAND
     amplifiers, amplifier_findings = find_amplifiers(linear.circuit, circuit)
-    partition = split(linear.circuit, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
+    analytic, amplifiers = _with_models(linear.circuit, amplifiers, operated)
+    partition = split(analytic, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
     frequency = comparison_grid(circuit.analyses, options.spots)
     formed = None
     if options.results is not None:
@@ -131,6 +137,7 @@ def analyse(
         {} if simulation is None else simulation.values,
         {} if simulation is None else simulation.unmeasured,
         tolerance=options.tolerance,
+        data_sheet=_by_data_sheet(partition, options, frequency, in_band),
     )
     evidence = Evidence(
         deck=deck,
@@ -155,6 +162,36 @@ def _operated(deck: Deck, circuit: Circuit, engine: EngineInfo) -> Operated:
     if engine.available and any(d.behaviour is not None or d.kind in QUANTITIES for d in devices):
         return operate(deck, circuit, engine=engine)
     return Operated(None)
+
+
+def _with_models(
+    circuit: Circuit, amplifiers: Sequence[Amplifier], operated: Operated
+) -> tuple[Circuit, tuple[Amplifier, ...]]:
+    """The circuit with stand-ins for amplifiers whose own model is not there, or is nonlinear while no operating point
+    is known. At an operating point what has no linear model stays without: a simulation speaks of it alone."""
+    chosen = {
+        a.name: stated(find(a.subckt), a.open_loop.values)
+        for a in amplifiers
+        if a.open_loop.model is None and (operated.point is None or a.elements == (a.name,))
+    }
+    return with_stand_ins(circuit, amplifiers, chosen) if chosen else (circuit, tuple(amplifiers))
+
+
+def _by_data_sheet(
+    partition: Partition, options: Options, frequency: Real, band: tuple[float, float]
+) -> dict[str, Complex]:
+    """The ports' impedances with data sheets in place of models, by subject, for stages whose parts are all known."""
+    parts = {a.name: find(a.subckt) for a in partition.amplifiers}
+    known = {name: part for name, part in parts.items() if part is not None and part.kind == "voltage-feedback"}
+    whole = [s for s in partition.stages if all(a.name in known for a in s.amplifiers)]
+    if not whole:
+        return {}
+    chosen = {a.name: stated(known[a.name], a.open_loop.values) for a in partition.amplifiers if a.name in known}
+    circuit, amplifiers = with_stand_ins(partition.circuit, partition.amplifiers, chosen)
+    by_sheet = split(circuit, amplifiers, extra_ports=options.ports, band=band)
+    subjects = {port.subject for stage in whole for port in stage.ports}
+    roads = return_ratios(by_sheet, frequency)
+    return {s: r.impedance for s, r in roads.items() if s in subjects and isinstance(r, ReturnRatio)}
 
 
 def _in_order(findings: Iterable[Finding]) -> tuple[Finding, ...]:

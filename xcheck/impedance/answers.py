@@ -38,9 +38,10 @@ def answer_ports(
     unmeasured: Mapping[str, str],
     *,
     tolerance: float,
+    data_sheet: Mapping[str, Complex] | None = None,
 ) -> tuple[PortAnswer, ...]:
     """Answers of all ports in stage and port order. topologies: by stage name; simulated and unmeasured: ohm, shape
-    (F,), and reasons by port subject."""
+    (F,), and reasons by port subject; data_sheet: ohm, shape (F,), by port subject."""
     answers = []
     for stage in partition.stages:
         for port in stage.ports:
@@ -52,14 +53,15 @@ def answer_ports(
                 _answer(
                     port, topologies.get(stage.name, "unclassified"), frequency, road, form, measured,
                     unmeasured.get(subject, ""), forms.neighbours.get(subject), tolerance,
+                    (data_sheet or {}).get(subject),
                 )
             )  # fmt: skip
     return tuple(answers)
 
 
-def _answer(  # noqa: PLR0917  # nine facts of one port, named at the one call
+def _answer(  # noqa: PLR0917  # ten facts of one port, named at the one call
     port: Port, topology: str, frequency: Real, road: ReturnRatio | str, form: ClosedForm | str,
-    measured: Complex | None, unmeasured: str, neighbour: Complex | None, tolerance: float,
+    measured: Complex | None, unmeasured: str, neighbour: Complex | None, tolerance: float, sheet: Complex | None,
 ) -> PortAnswer:  # fmt: skip
     ratio = road if isinstance(road, ReturnRatio) else None
     closed = form if isinstance(form, ClosedForm) else None
@@ -79,7 +81,7 @@ def _answer(  # noqa: PLR0917  # nine facts of one port, named at the one call
     return PortAnswer(
         port=port, topology=topology, frequency=frequency, closed_form=closed, return_ratio=ratio,
         simulated=measured, difference=gap, holds_to_hz=holds, verdict=verdict, unchecked_because=because,
-        notes=tuple(dict.fromkeys(notes)),
+        data_sheet=sheet, notes=tuple(dict.fromkeys(notes)),
     )  # fmt: skip
 
 

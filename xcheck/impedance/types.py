@@ -49,7 +49,7 @@ class PortAnswer:
     """All that is known of a port on one frequency grid (Hz, shape (F,)). None: not to be had, and
     `unchecked_because` or `notes` say why. difference: |Zsim - Zan|/|Zan|, shape (F,), on `frequency`;
     holds_to_hz: {'1%': Hz, '10%': Hz}, None where the rule of thumb holds over the whole grid or cannot be
-    judged; mid_hz: where single numbers are quoted."""
+    judged; data_sheet: the return ratio's value with the amplifiers' data sheets in place of their models."""
 
     port: Port
     topology: str
@@ -61,6 +61,7 @@ class PortAnswer:
     holds_to_hz: Mapping[str, float | None]
     verdict: Verdict
     unchecked_because: str = ""
+    data_sheet: Complex | None = None
     notes: tuple[str, ...] = ()
 
     @property

@@ -128,7 +128,7 @@ def _spot(answer: PortAnswer, hertz: float) -> dict[str, Any]:
         "rule_of_thumb": pair(form.rule_of_thumb if form is not None else None, index),
         "closed_form": pair(form.value if form is not None else None, index),
         "return_ratio": pair(road.impedance if road is not None else None, index),
-        "data_sheet": None,
+        "data_sheet": pair(answer.data_sheet, index),
         "simulated": pair(answer.simulated, index),
         "difference": number(answer.difference, index),
     }

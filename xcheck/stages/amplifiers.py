@@ -11,6 +11,7 @@ from xcheck.stages.bare import bare_amplifiers
 from xcheck.stages.boosters import with_boosters
 from xcheck.stages.directives import PinDirective, pin_directives
 from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins
+from xcheck.stages.missing import missing_amplifiers
 from xcheck.stages.model import LinearModel, bench, measured, open_loop
 from xcheck.stages.nodes import held_still
 from xcheck.stages.pins import (
@@ -76,6 +77,9 @@ class _Search:
             parent = instance.origin.path[-1] if instance.origin.path else ""
             below.setdefault(parent, []).extend(inner if found is None else [found])
         amplifiers = below.get("", [])
+        missing, doubts = missing_amplifiers(self.circuit, self.levels)
+        amplifiers += missing
+        self.findings += doubts
         claimed = {name for a in amplifiers for name in a.elements}
         amplifiers += bare_amplifiers(self.circuit, claimed, self.held, self.directives)
         order = {element.name: k for k, element in enumerate(self.circuit.elements)}
