@@ -7,6 +7,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from xcheck.deck.reader import read_deck, read_text
+from xcheck.elaboration import elaborate
+from xcheck.elaboration.flat import flat_deck
 from xcheck.errors import DeckUnreadable
 
 
@@ -53,6 +55,32 @@ def test_every_field_stands_where_its_place_says(cards: list[list[str]], chance:
 def test_any_text_gives_findings_and_no_exception(text: str | bytes) -> None:
     deck = read_text(text)
     assert deck.path == "deck.cir"
+
+
+ODD = st.text(alphabet="ab1 \t.,;=(){}'\"[]+-*/^?$#~|%&<>!:_\\µΩμé\u00a0", max_size=24)
+LETTER = st.sampled_from(
+    [*"abcdefghijklmnopqrstuvwxyz+*$;", ".", ".model ", ".subckt ", ".param ", ".func ", ".lib ", ".inc "]
+)
+KNOWN = st.sampled_from(
+    ["r1 a b ", "e1 a 0 value={", "e1 a 0 poly(2) ", "e1 a 0 table {v(a)} ", "b1 a 0 v=", "x1 a b s ", "v1 a 0 sin(",
+     "a1 [a b] %vd(a ", ".model d d(", ".subckt s a b ", ".param f(x)=", "k1 l1 l2 ", "q1 a b c ", "r1 a b r='",
+     "w1 a b v1 "]
+)  # fmt: skip
+LINE = st.one_of(
+    st.tuples(LETTER, ODD).map("".join), st.tuples(KNOWN, ODD).map("".join), st.sampled_from([".ends", ".end"])
+)
+
+
+@settings(max_examples=300, deadline=None)
+@given(st.lists(LINE, max_size=8))
+def test_odd_cards_give_findings_and_no_exception(lines: list[str]) -> None:
+    deck = read_text("\n".join(["title", *lines]))
+    circuit = elaborate(deck)
+    flat = flat_deck(circuit)
+    assert set(circuit.nodes) <= set(flat.nodes)
+    assert flat.text.isascii()
+    findings = (*deck.findings, *circuit.findings)
+    assert all(f.place.line <= len(lines) + 1 and f.message for f in findings)
 
 
 def test_faults_are_collected_in_order() -> None:

@@ -84,7 +84,7 @@ def vectors(path: Path) -> Values:
 
 
 def _bare(name: str) -> str:
-    inside = name[2:-1] if name[:2] in ("v(", "i(") and name.endswith(")") else name
+    inside = name[2:-1] if name[:2].lower() in ("v(", "i(") and name.endswith(")") else name
     return inside + "#branch" * (name[:2] == "i(")
 
 

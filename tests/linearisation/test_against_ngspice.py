@@ -54,6 +54,8 @@ DECKS = {
     "polynomial of second degree": "e1 o 0 poly(2) in 0 vb 0 0.1 1 2 3 4 5\nro o 0 1k",
     "polynomial of a current": "vs in x 0\nrs x 0 1k\nf1 0 o poly(1) vs 0 10 2k\nro o 0 1k",
     "behavioural resistor": "r1 in o r='1k*(1+v(vb)*v(vb))'\nr2 o 0 1k",
+    "powers of a negative base": "b1 o 0 v=(v(in)-v(vb))**3+(v(in)-v(vb))^2+pow(-v(vb),3)+pwr(-v(vb),3)\nro o 0 1k",
+    "lines, and beyond them": "b1 o 0 v=pwl(v(vb),0,0,1,2,2,5)+pwl(v(in),0,0,1,2)+pwl(-v(vb),0,0,1,2)\nro o 0 1k",
     "user functions": ".func sq(x) {x*x*k}\n.param k=2\nb1 o 0 v=sq(v(in,vb))\nro o 0 1k",
 }
 TOLERANCE = 1e-6

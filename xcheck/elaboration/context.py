@@ -73,7 +73,8 @@ class Amount:
             self.constant = number.value
             return
         try:
-            self.tree = parse(field.text if inside is None else inside)
+            text = field.text if inside is None or expression else inside
+            self.tree = parse(text, source=expression)
         except ExpressionError as fault:
             self.fault = fault
 

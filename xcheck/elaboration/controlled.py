@@ -3,12 +3,12 @@
 import re
 from typing import Literal
 
-from xcheck.circuit.elements import Behaviour, Controlled, Device, Element, Origin, Term
+from xcheck.circuit.elements import GROUND, Behaviour, Controlled, Device, Element, Origin, Term
 from xcheck.circuit.trees import Binary, Call, Constant, Node
 from xcheck.deck.cards import Card, Field
 from xcheck.elaboration.affine import Linear, Probe, depends_on_time, linear_form, probes_in
 from xcheck.elaboration.context import Amount, Context, is_value
-from xcheck.elaboration.expressions import ExpressionError
+from xcheck.elaboration.expressions import Evaluator, ExpressionError
 from xcheck.elaboration.geometry import factor
 from xcheck.elaboration.passives import Maker
 from xcheck.elaboration.problems import Problems
@@ -17,6 +17,8 @@ from xcheck.elaboration.tables import table
 from xcheck.elaboration.words import opened, words_of
 
 _POLY = re.compile(r"poly\s*(?:\(\s*(\d+)\s*\))?$")
+_NONE: dict[str, float] = {}
+_WITHOUT_NAMES = Evaluator(_NONE.__getitem__, {}, source=True)
 FACTORS = ("m", "tc1", "tc2", "temp", "dtemp")
 """What multiplies an expression's value."""
 Kind = Literal["e", "f", "g", "h"]
@@ -151,37 +153,44 @@ def _expression(card: Card, field: Field, kind: Kind) -> Maker:
         if context.many is not None and card.kind in "fg":
             own["m"] = context.many
         times = factor("c", own.get, None, context.scope.lookup("temper"), context.nominal)
-        probes = probes_in(amount.tree)
-        sensing = tuple(dict.fromkeys(context.node(n) for letter, ns in probes if letter == "v" for n in ns))
+        named = [word for letter, words in probes_in(amount.tree) if letter == "v" for word in words]
+        sensing = tuple(dict.fromkeys(context.node(word) for word in named))
         try:
-            form = None if depends_on_time(amount.tree) else linear_form(amount.tree, context.scope.evaluator())
-            if form is not None:
-                return _from_form(name, kind, ends, form.scaled(times), context, origin)
-            inner = resolved(amount.tree, context)
-            tree = inner if times == 1 else Binary("*", Constant(times), inner)
-            behaviour = Behaviour("v" if kind in "eh" else "i", tree)
+            tree = resolved(amount.tree, context)
         except ExpressionError as error:
-            if not error.unknown:
-                return Device(name, card.kind, ends, sensing, "", "expression", origin)
-            context.problems.expression(error, card, field, context.scope.names())
-            return Device(name, card.kind, ends, sensing, "", "value unknown", origin)
+            if error.unknown or error.function:
+                context.problems.expression(error, card, field, context.scope.names())
+                return Device(name, card.kind, ends, sensing, "", "value unknown", origin)
+            return Device(name, card.kind, ends, sensing, "", "expression", origin)
+        sensing = tuple(dict.fromkeys(n for letter, ns in probes_in(tree) if letter == "v" for n in ns))
+        form = _linear(tree)
+        if form is not None:
+            return _from_form(name, kind, ends, form.scaled(times), origin)
+        whole = tree if times == 1 else Binary("*", Constant(times), tree)
+        behaviour = Behaviour("v" if kind in "eh" else "i", whole)
         return Device(name, card.kind, ends, sensing, "", "expression", origin, behaviour)
 
     return make
 
 
-def _from_form(
-    name: str, kind: Kind, ends: tuple[str, str], form: Linear, context: Context, origin: Origin
-) -> Controlled:
-    terms = tuple(_probe_term(gain, probe, context) for probe, gain in form.gains.items() if gain)
+def _linear(tree: Node) -> Linear | None:
+    """The linear form of a resolved tree, None where it has none, or no value."""
+    try:
+        return None if depends_on_time(tree) else linear_form(tree, _WITHOUT_NAMES)
+    except ExpressionError:
+        return None
+
+
+def _from_form(name: str, kind: Kind, ends: tuple[str, str], form: Linear, origin: Origin) -> Controlled:
+    terms = tuple(_probe_term(gain, probe) for probe, gain in form.gains.items() if gain)
     return Controlled(name, kind, ends, terms, form.constant, origin)
 
 
-def _probe_term(gain: float, probe: Probe, context: Context) -> Term:
+def _probe_term(gain: float, probe: Probe) -> Term:
     letter, words = probe
     if letter == "i":
-        return Term(gain, source=context.prefix + words[0])
-    return Term(gain, context.node(words[0]), context.node(words[1] if len(words) > 1 else "0"))
+        return Term(gain, source=words[0])
+    return Term(gain, words[0], words[1] if len(words) > 1 else GROUND)
 
 
 def _device(card: Card, reason: str) -> Maker:

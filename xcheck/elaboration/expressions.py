@@ -1,7 +1,9 @@
 """Expressions of parameters and behavioural sources: text to a tree, a tree to a value or to a linear form.
 
 Operators and their order are those of the ngspice manual's chapters on `.param` and on B sources, checked
-against ngspice itself. Nothing recurses deeper than DEEPEST, so no expression can exhaust the stack.
+against ngspice itself. The two are two languages with different functions: in parameters, `pow` knows signs and
+`1mil` is a thousandth; in sources, `pwr` knows signs, and braces and quotes within are as good as blanks.
+Nothing recurses deeper than DEEPEST, so no expression can exhaust the stack.
 """
 
 import math
@@ -73,9 +75,11 @@ def tokens_of(text: str) -> list[Token]:
     return found
 
 
-def parse(text: str) -> Node:
-    """The tree of an expression. Raises ExpressionError."""
-    parser = _Parser(tokens_of(text))
+def parse(text: str, *, source: bool = False) -> Node:
+    """The tree of an expression, of a parameter or of a source. Raises ExpressionError."""
+    if source:
+        text = re.sub("[{}']", " ", text)
+    parser = _Parser(tokens_of(text), source=source)
     try:
         tree = parser.choice()
     except RecursionError:
@@ -87,8 +91,9 @@ def parse(text: str) -> Node:
 
 
 class _Parser:
-    def __init__(self, tokens: list[Token]) -> None:
+    def __init__(self, tokens: list[Token], *, source: bool) -> None:
         self.tokens = tokens
+        self.source = source
         self.position = 0
         self.depth = 0
 
@@ -156,7 +161,7 @@ class _Parser:
         token = self.peek()
         if token.kind == "number":
             self.position += 1
-            return Constant(_number(token))
+            return Constant(_number(token, source=self.source))
         if token.kind == "probe":
             self.position += 1
             kind, _, inside = token.text.partition(" ")
@@ -184,7 +189,7 @@ class _Parser:
         )
 
 
-def _number(token: Token) -> float:
+def _number(token: Token, *, source: bool) -> float:
     number = read_number(token.text)
     if number is None:
         raise ExpressionError(f"`{token.text}` is no number", token.start, token.end)
@@ -192,30 +197,41 @@ def _number(token: Token) -> float:
         raise ExpressionError(
             f"`{token.text}`: a digit after the scale factor; ngspice refuses it here", token.start, token.end
         )
+    if number.scale.lower() == "mil" and not source:
+        return float(number.digits) * 1e-3
     return number.value
 
 
 def _power(a: float, b: float) -> float:
-    return math.copysign(abs(a) ** b, 1.0) if a < 0 and b != int(b) else a**b
+    """`a**b`, of the base's size whatever its sign (seen on ngspice 39)."""
+    return float(abs(a) ** b)
 
 
-FUNCTIONS: Mapping[str, tuple[int, int, Callable[..., float]]] = {
+_BOTH: Mapping[str, tuple[int, int, Callable[..., float]]] = {
     "sqrt": (1, 1, math.sqrt), "abs": (1, 1, abs), "exp": (1, 1, math.exp), "ln": (1, 1, math.log),
     "log": (1, 1, math.log), "log10": (1, 1, math.log10), "sin": (1, 1, math.sin), "cos": (1, 1, math.cos),
     "tan": (1, 1, math.tan), "asin": (1, 1, math.asin), "acos": (1, 1, math.acos), "atan": (1, 1, math.atan),
-    "arctan": (1, 1, math.atan), "sinh": (1, 1, math.sinh), "cosh": (1, 1, math.cosh), "tanh": (1, 1, math.tanh),
+    "sinh": (1, 1, math.sinh), "cosh": (1, 1, math.cosh), "tanh": (1, 1, math.tanh),
     "asinh": (1, 1, math.asinh), "acosh": (1, 1, math.acosh), "atanh": (1, 1, math.atanh),
-    "pow": (2, 2, _power), "pwr": (2, 2, lambda a, b: abs(a) ** b),
-    "min": (2, 2, min), "max": (2, 2, max), "int": (1, 1, lambda a: float(math.trunc(a))),
-    "nint": (1, 1, lambda a: float(round(a))), "floor": (1, 1, lambda a: float(math.floor(a))),
-    "ceil": (1, 1, lambda a: float(math.ceil(a))), "sgn": (1, 1, lambda a: float((a > 0) - (a < 0))),
-    "u": (1, 1, lambda a: float(a > 0)), "u2": (1, 1, lambda a: min(max(a, 0.0), 1.0)),
-    "uramp": (1, 1, lambda a: max(a, 0.0)), "sqr": (1, 1, lambda a: a * a),
-    "eq0": (1, 1, lambda a: float(a == 0)), "ne0": (1, 1, lambda a: float(a != 0)),
-    "gt0": (1, 1, lambda a: float(a > 0)), "lt0": (1, 1, lambda a: float(a < 0)),
-    "ge0": (1, 1, lambda a: float(a >= 0)), "le0": (1, 1, lambda a: float(a <= 0)),
-    "ternary_fcn": (3, 3, lambda c, a, b: a if c else b),
+    "min": (2, 2, min), "max": (2, 2, max), "nint": (1, 1, lambda a: float(round(a))),
+    "floor": (1, 1, lambda a: float(math.floor(a))), "ceil": (1, 1, lambda a: float(math.ceil(a))),
+    "sgn": (1, 1, lambda a: float((a > 0) - (a < 0))), "ternary_fcn": (3, 3, lambda c, a, b: a if c else b),
 }  # fmt: skip
+FUNCTIONS: Mapping[str, tuple[int, int, Callable[..., float]]] = {
+    **_BOTH, "arctan": (1, 1, math.atan), "int": (1, 1, lambda a: float(math.trunc(a))), "sqr": (1, 1, lambda a: a * a),
+    "pow": (2, 2, lambda a, b: a**b), "pwr": (2, 2, _power),
+}  # fmt: skip
+"""Of parameters: name to fewest and most arguments and the function."""
+SOURCE_FUNCTIONS: Mapping[str, tuple[int, int, Callable[..., float]]] = {
+    **_BOTH, "pow": (2, 2, _power), "pwr": (2, 2, lambda a, b: math.copysign(abs(a) ** b, a)),
+    "u": (1, 1, lambda a: 0.5 if a == 0 else float(a > 0)), "u2": (1, 1, lambda a: min(max(a, 0.0), 1.0)),
+    "uramp": (1, 1, lambda a: max(a, 0.0)), "eq0": (1, 1, lambda a: float(a == 0)),
+    "ne0": (1, 1, lambda a: float(a != 0)), "gt0": (1, 1, lambda a: float(a > 0)),
+    "lt0": (1, 1, lambda a: float(a < 0)), "ge0": (1, 1, lambda a: float(a >= 0)),
+    "le0": (1, 1, lambda a: float(a <= 0)),
+}  # fmt: skip
+"""Of sources; beside these there are `pwl` and `ddt`, which have no value of their own."""
+NOT_EVALUATED = ("pwl", "ddt")
 RANDOM = ("limit", "agauss", "gauss", "aunif", "unif", "rnd", "sunif", "sgauss", "poisson", "exponential")
 """Functions that draw a random value in ngspice: never evaluated here."""
 
@@ -233,10 +249,12 @@ Lookup = Callable[[str], float]
 
 @dataclass(frozen=True)
 class Evaluator:
-    """Values of trees: `lookup` gives a parameter's value or raises KeyError; functions by name."""
+    """Values of trees: `lookup` gives a parameter's value or raises KeyError; functions by name; source: whether the
+    tree is of a source's expression."""
 
     lookup: Lookup
     functions: Mapping[str, Function]
+    source: bool = False
 
     def value(self, tree: Node, depth: int = 0) -> float:
         """The value of a tree. Raises ExpressionError (unknown name, no real value, too deep)."""
@@ -285,13 +303,14 @@ class Evaluator:
                     tree.start, tree.end,
                 )  # fmt: skip
             own = dict(zip(function.parameters, arguments, strict=True))
-            inner = Evaluator(lambda n: own[n] if n in own else self.lookup(n), self.functions)
+            inner = Evaluator(lambda n: own[n] if n in own else self.lookup(n), self.functions, self.source)
             return inner._value(function.body, depth)
         if name in RANDOM:
             raise ExpressionError(f"`{name}` draws a random value in ngspice", tree.start, tree.end)
-        if name not in FUNCTIONS:
+        known = SOURCE_FUNCTIONS if self.source else FUNCTIONS
+        if name not in known:
             raise ExpressionError(f"`{name}` is no known function", tree.start, tree.end, function=name)
-        least, most, operation = FUNCTIONS[name]
+        least, most, operation = known[name]
         if not least <= len(arguments) <= most:
             raise ExpressionError(f"`{name}` takes {least} arguments, given {len(arguments)}", tree.start, tree.end)
         return float(operation(*arguments))

@@ -116,7 +116,7 @@ class _Writing:
             return f"{name} {self._at(device.nodes)} {self._behaviour(device.behaviour)}"
         ends = (*device.nodes, *device.sensing)
         pairs = "".join(f" {key}={_number(value)}" for key, value in device.parameters)
-        if device.kind == "r" and device.parameters:
+        if device.kind == "r" and device.definition is None and device.parameters:
             value, at_ac = (_number(number) for _, number in device.parameters)
             return f"{name} {self._at(ends)} {value} ac={at_ac}"
         if device.kind == "t":

@@ -22,12 +22,13 @@ def value_by_model(kind: str, get: Get, model: DeviceModel) -> float | None:
     if kind == "l":
         return model.get("ind") or None
     width, length = get("w") or model.get("defw", DEFAULT_WIDTH), get("l") or model.get("defl")
-    width, length = width - model.get("narrow"), length - model.get("short")
+    edges = 2 if kind == "r" else 1  # at both ends of a resistor, once for a capacitor (seen on ngspice 39)
+    width, length = width - edges * model.get("narrow"), length - edges * model.get("short")
     if kind == "r":
         sheet = model.get("rsh")
-        if sheet and length > 0 and width > 0:
-            return sheet * length / width
-        return model.get("r") or model.get("res") or MISSING_OHM
+        if sheet and get("l"):
+            return sheet * length / width if length > 0 and width > 0 else None
+        return model.get("r") or model.get("resistance") or MISSING_OHM
     if get("l") and (model.get("cj") or model.get("cjsw")):
         return model.get("cj") * width * length + model.get("cjsw") * 2 * (width + length)
     return model.get("cap") or None

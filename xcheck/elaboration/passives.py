@@ -53,7 +53,10 @@ def passive(card: Card, problems: Problems) -> Maker | None:
                 return _without_value(card, kind, rest, ends, context)
             number = value_by_model(kind, written.get, definition)
             if number is None:
-                return Device(name, kind, ends, (), definition.name, "geometry model", origin, definition=definition)
+                own_values = tuple((key, value) for key, value in written.items() if value is not None)
+                return Device(
+                    name, kind, ends, (), definition.name, "geometry model", origin, None, definition, own_values
+                )
         elif amount.tree is not None and (probes := probes_in(amount.tree)):
             sensing = tuple(context.node(n) for letter, ns in probes if letter == "v" for n in ns)
             behaviour = _behaviour(kind, amount, context, written)
@@ -66,7 +69,7 @@ def passive(card: Card, problems: Problems) -> Maker | None:
             number = MISSING_OHM
         times = factor(kind, written.get, definition, context.scope.lookup("temper"), context.nominal)
         if kind == "r" and written.get("ac") is not None:
-            both = (("r", number * times), ("ac", written["ac"] or 0.0))
+            both = (("r", number * times), ("ac", (written["ac"] or 0.0) * times))
             return Device(name, kind, ends, (), "", "resistance of its own at AC", origin, parameters=both)
         return Passive(name, kind, ends, number * times, origin)
 

@@ -6,7 +6,7 @@ from itertools import combinations_with_replacement
 
 from xcheck.circuit.trees import Binary, Call, Choice, Constant, Name, Node, Unary
 from xcheck.elaboration.context import Context
-from xcheck.elaboration.expressions import ExpressionError
+from xcheck.elaboration.expressions import NOT_EVALUATED, RANDOM, SOURCE_FUNCTIONS, ExpressionError
 
 LARGEST_TREE = 5000
 """Nodes of one resolved expression; functions that call functions can grow without bound."""
@@ -69,6 +69,10 @@ class _Resolution:
         given = tuple(self.node(argument, arguments) for argument in tree.arguments)
         function = self.functions.get(tree.function)
         if function is None:
+            if tree.function not in SOURCE_FUNCTIONS and tree.function not in (*RANDOM, *NOT_EVALUATED):
+                raise ExpressionError(
+                    f"`{tree.function}` is no function of sources", tree.start, tree.end, function=tree.function
+                )
             return replace(tree, arguments=given)
         if len(given) != len(function.parameters):
             wanted = len(function.parameters)

@@ -29,7 +29,7 @@ def table(card: Card, fields: tuple[Field, ...], problems: Problems) -> Maker | 
     if len(words) < 4 or len(words) % 2:
         problems.say("syntax", "error", card, fields[2], f"TABLE wants pairs of numbers, read {len(words)} of them")
         return None
-    amount = Amount(card, Field(wanted.group(1), wanted.start(1), wanted.end(1)))
+    amount = Amount(card, Field(wanted.group(1), wanted.start(1), wanted.end(1)), expression=True)
     numbers = [Amount(card, word) for word in words]
 
     def make(context: Context) -> Element | None:

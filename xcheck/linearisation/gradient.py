@@ -144,7 +144,7 @@ class _Slopes:
             case "ternary_fcn", [condition, yes, no]:
                 return self.one_of(yes, no, lambda: bool(condition.value))
             case "pwl", [x, *points]:
-                return _between(x, [p.value for p in points], held=not self.all_branches)
+                return _between(x, [p.value for p in points], one_line=self.all_branches)
         raise NoSlope(f"the slope of `{function}` is not known")
 
 
@@ -173,22 +173,21 @@ def _binary(operator: str, a: Slope, b: Slope) -> Slope:
 
 
 def _power(a: Slope, b: Slope) -> Slope:
-    value = abs(a.value) ** b.value if a.value < 0 and b.value != int(b.value) else a.value**b.value
+    value = abs(a.value) ** b.value  # of the base's size whatever its sign, as ngspice 39 has it
     by_base = b.value * (value / a.value if a.value else float(b.value == 1))
     by_exponent = value * math.log(abs(a.value)) if abs(a.value) > LEAST_BASE and b.by else 0.0
     return _sum(value, (by_base, a), (by_exponent, b))
 
 
-def _between(x: Slope, points: list[float], held: bool) -> Slope:
-    """Straight lines between (x, y) pairs; beyond the ends held, or one line from end to end where not."""
+def _between(x: Slope, points: list[float], *, one_line: bool) -> Slope:
+    """Straight lines between (x, y) pairs, the outermost going on beyond the ends as ngspice 39 has it; or one line
+    from end to end."""
     xs, ys = points[0::2], points[1::2]
     if len(xs) != len(ys) or len(xs) < 2 or any(b <= a for a, b in pairwise(xs)):
         raise NoSlope("its table is not in order")
-    if not held:
+    if one_line:
         rise = (ys[-1] - ys[0]) / (xs[-1] - xs[0])
         return x.through(ys[0] + rise * (x.value - xs[0]), rise)
-    if not xs[0] < x.value < xs[-1]:
-        return Slope(ys[0] if x.value <= xs[0] else ys[-1])
-    k = bisect_right(xs, x.value) - 1
+    k = min(max(bisect_right(xs, x.value) - 1, 0), len(xs) - 2)
     rise = (ys[k + 1] - ys[k]) / (xs[k + 1] - xs[k])
     return x.through(ys[k] + rise * (x.value - xs[k]), rise)
