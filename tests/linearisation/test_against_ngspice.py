@@ -56,6 +56,9 @@ DECKS = {
     "behavioural resistor": "r1 in o r='1k*(1+v(vb)*v(vb))'\nr2 o 0 1k",
     "powers of a negative base": "b1 o 0 v=(v(in)-v(vb))**3+(v(in)-v(vb))^2+pow(-v(vb),3)+pwr(-v(vb),3)\nro o 0 1k",
     "lines, and beyond them": "b1 o 0 v=pwl(v(vb),0,0,1,2,2,5)+pwl(v(in),0,0,1,2)+pwl(-v(vb),0,0,1,2)\nro o 0 1k",
+    "table between points": "e1 o 0 table {v(vb)} = (0,0) (2,1) (5,7)\nro o 0 1k",
+    "table, at corners": "e1 o1 0 table {v(vb)} = (0,0) (3.05,1) (5,7)\ng1 0 o table {v(vb)} (3,0) (4,1m)\nro o 0 1k",
+    "table, at its end": "e1 o1 0 table {v(vb)} = (0,0) (2.95,1)\ne2 o 0 table {v(in)} (0,0) (0.5,1)\nro o 0 1k",
     "user functions": ".func sq(x) {x*x*k}\n.param k=2\nb1 o 0 v=sq(v(in,vb))\nro o 0 1k",
 }
 TOLERANCE = 1e-6
@@ -74,7 +77,8 @@ def simulated(text: str, folder: Path) -> tuple[np.ndarray, dict[str, np.ndarray
     names = [line.split()[1] for line in lines[lines.index("Variables:") + 1 :]]
     values = np.frombuffer(data, dtype=np.complex128).reshape(-1, len(names))
     found = {name[2:-1]: values[:, k] for k, name in enumerate(names) if name.startswith("v(")}
-    return values[:, 0].real, found
+    # the two nodes that ngspice puts into a TABLE source are not the deck's
+    return values[:, 0].real, {node: value for node, value in found.items() if "_int" not in node}
 
 
 def solved(circuit: Circuit, frequency: np.ndarray) -> dict[str, np.ndarray]:

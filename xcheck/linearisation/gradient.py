@@ -145,6 +145,9 @@ class _Slopes:
                 return self.one_of(yes, no, lambda: bool(condition.value))
             case "pwl", [x, *points]:
                 return _between(x, [p.value for p in points], one_line=self.all_branches)
+            case "table", [x, *points]:
+                numbers = [p.value for p in points]
+                return _between(x, numbers, one_line=True) if self.all_branches else _looked_up(x, numbers)
         raise NoSlope(f"the slope of `{function}` is not known")
 
 
@@ -182,12 +185,35 @@ def _power(a: Slope, b: Slope) -> Slope:
 def _between(x: Slope, points: list[float], *, one_line: bool) -> Slope:
     """Straight lines between (x, y) pairs, the outermost going on beyond the ends as ngspice 39 has it; or one line
     from end to end."""
-    xs, ys = points[0::2], points[1::2]
-    if len(xs) != len(ys) or len(xs) < 2 or any(b <= a for a, b in pairwise(xs)):
-        raise NoSlope("its table is not in order")
+    xs, ys = _in_order(points)
     if one_line:
         rise = (ys[-1] - ys[0]) / (xs[-1] - xs[0])
         return x.through(ys[0] + rise * (x.value - xs[0]), rise)
     k = min(max(bisect_right(xs, x.value) - 1, 0), len(xs) - 2)
     rise = (ys[k + 1] - ys[k]) / (xs[k + 1] - xs[k])
     return x.through(ys[k] + rise * (x.value - xs[k]), rise)
+
+
+def _looked_up(x: Slope, points: list[float]) -> Slope:
+    """A TABLE source: straight lines between points, level beyond them, and each corner rounded by a parabola over a
+    tenth of the shorter line to its either side, as ngspice 39 has it."""
+    xs, ys = _in_order(points)
+    lengths = [math.inf, *(b - a for a, b in pairwise(xs)), math.inf]
+    rises = [0.0, *((d - c) / (b - a) for (a, b), (c, d) in zip(pairwise(xs), pairwise(ys), strict=True)), 0.0]
+    for k, (corner, level) in enumerate(zip(xs, ys, strict=True)):
+        reach = 0.1 * min(lengths[k], lengths[k + 1])
+        if abs(x.value - corner) < reach:
+            into = x.value - corner + reach
+            bend = (rises[k + 1] - rises[k]) / (2 * reach)
+            value = level - rises[k] * reach + rises[k] * into + 0.5 * bend * into**2
+            return x.through(value, rises[k] + bend * into)
+    k = bisect_right(xs, x.value)
+    at = max(k - 1, 0)
+    return x.through(ys[at] + rises[k] * (x.value - xs[at]), rises[k])
+
+
+def _in_order(points: list[float]) -> tuple[list[float], list[float]]:
+    xs, ys = points[0::2], points[1::2]
+    if len(xs) != len(ys) or len(xs) < 2 or any(b <= a for a, b in pairwise(xs)):
+        raise NoSlope("its table is not in order")
+    return xs, ys
