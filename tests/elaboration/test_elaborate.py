@@ -109,7 +109,10 @@ def test_what_is_not_linear_is_kept_as_a_device(card: str) -> None:
 
 @pytest.mark.parametrize(
     ("body", "rule", "line", "column"),
-    [("r1 a 0 {x+1}", "undefined-parameter", 2, 8), ("x1 a 0 nothere", "undefined-model", 2, 8),
+    [("r1 a 0 {x+1}", "undefined-parameter", 2, 8),
+     ("v1 a 0 1\nf1 a 0 v2 3", "undefined-parameter", 3, 1),
+     ("b1 a 0 v=i(vx)*v(a)", "undefined-parameter", 2, 1), ("b1 a 0 v=foo(v(a))", "undefined-parameter", 2, 10),
+     ("x1 a 0 nothere", "undefined-model", 2, 8),
      ("d1 a 0 dx", "undefined-model", 2, 8), (".subckt s a b\nr1 a b 1\n.ends\nx1 a s", "pin-count", 5, 1),
      ("r1 a 0 1k\nr1 b 0 2k", "duplicate-name", 3, 1), ("r1 a 0", "value-missing", 2, 1),
      ("e1 a 0 b 0", "value-missing", 2, 1), ("r1 a", "syntax", 2, 1), ("r1 a 0 {1+}", "syntax", 2, 8),

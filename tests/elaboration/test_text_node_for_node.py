@@ -78,6 +78,10 @@ REFUSED: dict[str, tuple[str | bytes, str, int]] = {
     "carriage returns alone": (PLAIN.replace("\n", "\r"), "syntax", 1),
     "no subcircuit of that name": (PLAIN + "x1 a b nothere\nx2 a b nothere\n", "undefined-model", 6),
     "no parameters": (PLAIN + "x1 a b s r=1k\n.subckt s a b\nr1 a b 1k\n.ends\n", "undefined-parameter", 6),
+    "a transfer function in a source": (PLAIN + "e1 e 0 LAPLACE {v(b)} {1/(1+s)}\n", "syntax", 6),
+    "the current of nothing": (PLAIN + "f1 0 b vx 2\n", "undefined-parameter", 6),
+    "a function of parameters in a source": (PLAIN + "b1 e 0 v=int(v(b))\n", "undefined-parameter", 6),
+    "a function of sources in a parameter": (PLAIN + "r3 b 0 {u(1)}\n", "undefined-parameter", 6),
     "one element twice": (PLAIN + "r2 b 0 3k\n", "duplicate-name", 6),
 }
 

@@ -41,6 +41,13 @@ class Context:
             return mapped
         return word if word in self.everywhere else self.prefix + word
 
+    def source(self, word: str) -> str:
+        """The flat name of an element whose current is read; `word` in lower case, `v1` or, through instances and
+        with the element's letter before them, `v.x1.v1`."""
+        if word[1:2] == "." and word.rpartition(".")[2].startswith(word[0]):
+            word = word[2:]
+        return self.prefix + word
+
     def name(self, card: Card) -> str:
         return self.prefix + card.fields[0].key
 

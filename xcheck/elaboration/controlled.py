@@ -41,6 +41,11 @@ def controlled(card: Card, problems: Problems) -> Maker | None:
     if head == "table":
         return table(card, fields, problems)
     if head in ("laplace", "freq", "chebyshev"):
+        problems.say(
+            "syntax", "warning", card, fields[2],
+            f"`{head.upper()}` is not in ngspice's own dialect, which refuses the deck; the source is not modelled",
+            "write the transfer function as an XSPICE device with an s_xfer model",
+        )  # fmt: skip
         return _device(card, "frequency-dependent expression")
     if (poly := _POLY.match(fields[2].key)) or fields[2].key == "poly":
         return _poly(card, kind, fields, poly.group(1) if poly else None, problems)
@@ -75,7 +80,7 @@ def controlled(card: Card, problems: Problems) -> Maker | None:
 
 def _term(gain: float, controls: tuple[Field, ...], context: Context) -> Term:
     if len(controls) == 1:
-        return Term(gain, source=context.prefix + controls[0].key)
+        return Term(gain, source=context.source(controls[0].key))
     return Term(gain, context.node(controls[0].key), context.node(controls[1].key))
 
 
@@ -117,7 +122,7 @@ def _poly(card: Card, kind: Kind, fields: tuple[Field, ...], dimension: str | No
 def _probe(words: tuple[Field, ...], context: Context) -> Node:
     """A voltage between two nodes, or the current through a source, as part of a tree."""
     if len(words) == 1:
-        return Call("i", (), (context.prefix + words[0].key,), words[0].start, words[0].end)
+        return Call("i", (), (context.source(words[0].key),), words[0].start, words[0].end)
     return Call("v", (), tuple(context.node(w.key) for w in words), words[0].start, words[-1].end)
 
 

@@ -55,7 +55,7 @@ def device(card: Card, problems: Problems) -> Maker | None:
             own.insert(0, ("area", Amount(card, behind[0]).at(context)))
         if context.many is not None and card.kind in "dqmjz":
             own = [*((key, value) for key, value in own if key != "m"), ("m", context.many)]
-        control = context.prefix + plain[2].key if card.kind == "w" else ""
+        control = context.source(plain[2].key) if card.kind == "w" else ""
         return Device(
             context.name(card), card.kind, inner, felt, name, reason, Origin(card, context.path),
             definition=definition_of(name, context, models) if has_model else None,
@@ -100,7 +100,7 @@ def code_model(card: Card, problems: Problems) -> Maker | None:
         if context.model(named.key) is None:
             context.problems.unknown_model(card, named, context.model_names(), "model")
         flat = tuple(
-            (context.node(word) if kind == "node" else context.prefix + word if kind == "source" else word, kind)
+            (context.node(word) if kind == "node" else context.source(word) if kind == "source" else word, kind)
             for word, kind in kinds
         )
         return Device(

@@ -9,6 +9,7 @@ from xcheck.elaboration.analyses import KINDS as KINDS_OF_ANALYSIS
 from xcheck.elaboration.analyses import analysis_of, is_analysis, nominal_of, temperature_of
 from xcheck.elaboration.context import Context
 from xcheck.elaboration.controlled import behavioural, controlled
+from xcheck.elaboration.currents import tell_missing
 from xcheck.elaboration.definitions import Body, Branches, Definition, sort_cards
 from xcheck.elaboration.devices import KINDS, code_model, device
 from xcheck.elaboration.expressions import ExpressionError, Function, parse
@@ -89,6 +90,8 @@ class _Elaboration:
         else:
             boundary = self._block(subckt, scope)
             analyses = ()
+        if not self.full:
+            tell_missing(self.elements, self.problems)
         return Circuit(
             deck=self.deck, elements=tuple(self.elements), instances=tuple(self.instances), analyses=analyses,
             directives=self.deck.directives, boundary=boundary, findings=self.problems.findings(),
@@ -278,7 +281,8 @@ class _Elaboration:
 
     def _instance(self, call: _Call, context: Context, active: tuple[str, ...]) -> None:
         name = context.name(call.card)
-        definition = next((b.subckts[call.subckt.key] for b in context.bodies if call.subckt.key in b.subckts), None)
+        wanted = call.subckt.key
+        definition = next((b.subckts[wanted] for b in context.bodies if wanted in b.subckts), None)
         nodes = tuple(context.node(f.key) for f in call.nodes)
         fault = self._fault(call, definition, context, active)
         if definition is None or fault:
@@ -290,7 +294,7 @@ class _Elaboration:
         functions = self._functions(definition.body)
         inside = any(not isinstance(i, Card) or i.kind == ".param" for i in definition.body.items)
         many = context.many
-        multiplied = call.subckt.key in self.multiplied and "m" not in definition.defaults
+        multiplied = wanted in self.multiplied and "m" not in definition.defaults
         if definition.defaults or call.arguments or inside or multiplied or functions is not scope.functions:
             scope = Scope(context.scope, functions, self.problems)
             for key, value in definition.defaults.items():
@@ -305,7 +309,8 @@ class _Elaboration:
                 scope.set("m", many)
         identity = (id(definition), scope.values() if scope is not context.scope else (), context.key)
         pins = dict(zip(definition.pins, nodes, strict=True))
-        bodies = (definition.body, *context.bodies)
+        body = definition.body
+        bodies = (body, *context.bodies) if body.subckts or body.models else context.bodies
         inner = Context(
             name + ".", path, pins, self.everywhere, scope, bodies, self.problems, identity, self.nominal, many
         )

@@ -142,6 +142,7 @@ class _Writing:
         return f"{behaviour.gives}={self._tree(tree)}"
 
     def _model(self, kind: str, text: str) -> str:
+        text = text.encode("ascii", "replace").decode("ascii")
         known = self.models.get((kind, text))
         if known is None:
             known = self.models[kind, text] = f"m_{len(self.models) + 1}"
@@ -223,4 +224,4 @@ def _degrees(phasor: complex) -> float:
 
 
 def _printable(name: str) -> str:
-    return "".join(c if c.isalnum() or c in "._" else "?" for c in name)
+    return "".join(c if (c.isascii() and c.isalnum()) or c in "._" else "?" for c in name)

@@ -36,11 +36,17 @@ def passive(card: Card, problems: Problems) -> Maker | None:
     amount = Amount(card, value) if value is not None else None
     own = _own_parameters(card, words)
     cards: dict[int, dict[str, Amount]] = {}
+    probes = probes_in(amount.tree) if amount is not None and amount.tree is not None else []
+    alone = amount if value is not None and is_value(value) and len(rest) < 2 and not own and not probes else None
 
     def make(context: Context) -> Element | None:
         ends = (context.node(nodes[0]), context.node(nodes[1]))
         origin = Origin(card, context.path)
         name = context.name(card)
+        if alone is not None and context.many is None:  # nearly all of them
+            only = alone.at(context)
+            if only is not None:
+                return Passive(name, kind, ends, only if only or kind != "r" else MISSING_OHM, origin)
         written = {key: parameter.at(context) for key, parameter in own.items()}
         if context.many is not None:
             written["m"] = context.many
@@ -57,7 +63,7 @@ def passive(card: Card, problems: Problems) -> Maker | None:
                 return Device(
                     name, kind, ends, (), definition.name, "geometry model", origin, None, definition, own_values
                 )
-        elif amount.tree is not None and (probes := probes_in(amount.tree)):
+        elif probes:
             sensing = tuple(context.node(n) for letter, ns in probes if letter == "v" for n in ns)
             behaviour = _behaviour(kind, amount, context, written)
             return Device(name, kind, ends, sensing, "", "expression", origin, behaviour)

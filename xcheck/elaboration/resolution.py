@@ -63,7 +63,7 @@ class _Resolution:
             flat = (
                 tuple(self.context.node(word) for word in tree.words)
                 if tree.function == "v"
-                else tuple(self.context.prefix + word for word in tree.words)
+                else tuple(self.context.source(word) for word in tree.words)
             )
             return replace(tree, words=flat)
         given = tuple(self.node(argument, arguments) for argument in tree.arguments)
