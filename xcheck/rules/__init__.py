@@ -16,8 +16,10 @@ from xcheck.rules.operating_point import (
     output_at_rail,
     simulation_fails,
 )
+from xcheck.rules.pins import inputs_tied, output_grounded, outputs_tied, pin_order
 from xcheck.rules.rule import Rule, one_a_card
 from xcheck.rules.scales import femto_for_farad, milli_for_mega
+from xcheck.rules.supplies import supply_missing, supply_reversed
 from xcheck.rules.values import comma_in_number, digit_after_suffix, trailing_text
 from xcheck.rules.wiring import ground_missing, input_without_dc_path, node_dangling
 
@@ -46,6 +48,12 @@ RULES: tuple[Rule, ...] = (
     Rule("ground-missing", "error", "no node 0 (or gnd)", ground_missing),
     Rule("node-dangling", "warning", "a node with one terminal that is no port", node_dangling),
     Rule("input-without-dc-path", "error", "an amplifier input without a DC path", input_without_dc_path),
+    Rule("inputs-tied", "error", "both inputs of an amplifier on one node", inputs_tied),
+    Rule("outputs-tied", "error", "two outputs, or an output and a source, on one node", outputs_tied),
+    Rule("output-grounded", "error", "an output on ground or a supply", output_grounded),
+    Rule("pin-order", "error", "nodes that do not fit the pins that a model declares", pin_order),
+    Rule("supply-missing", "error", "a supply pin that no source reaches", supply_missing),
+    Rule("supply-reversed", "error", "the positive supply below the negative one", supply_reversed),
     Rule("amplifier-pins-uncertain", "warning", "evidence for an amplifier's pins conflicts or is too thin"),
     Rule("feedback-positive", "error", "net feedback at DC is positive", feedback_positive, also=("note",)),
     Rule("feedback-missing", "warning", "no way from output to inverting input", feedback_missing, also=("note",)),

@@ -36,6 +36,7 @@ from xcheck.impedance.return_ratio import loop_gains
 from xcheck.notation import engineering
 from xcheck.reviewed import Evidence
 from xcheck.rules.graphs import influence, loops, reach
+from xcheck.rules.pins import misfits
 from xcheck.rules.unread import is_complete
 from xcheck.stages.types import Amplifier, Partition, Stage
 
@@ -86,9 +87,9 @@ def feedback_missing(evidence: Evidence) -> Iterator[Finding]:
     without = [a for a in evidence.partition.amplifiers if not _share(circles, a.output, a.inverting)]
     if not without:
         return
-    positive = {a.name for stage, _, _ in _positive(evidence) for a in stage.amplifiers}
+    explained = {a.name for stage, _, _ in _positive(evidence) for a in stage.amplifiers} | misfits(evidence).keys()
     driven = _driven_at_ac(evidence)
-    for amplifier in (a for a in without if a.name not in positive):
+    for amplifier in (a for a in without if a.name not in explained):
         meant = _why_meant(evidence, amplifier) or _reference_input(evidence, amplifier, driven)
         message = (
             f"no way leads from the output of {amplifier.name}, node `{amplifier.output}`, to its inverting input, "

@@ -134,7 +134,10 @@ class _Search:
     ) -> SignalPins | None:
         nodes = dict(instance.pins)
         power = {named[role] for role in POWER if role in named}
-        outputs = [s for s in judged if s.output not in power and nodes[s.output] not in self.held.reasons]
+        free = [s for s in judged if s.output not in power]
+        outputs = [s for s in free if nodes[s.output] not in self.held.reasons]
+        if not outputs:  # a board may have an output on a supply by mistake
+            outputs = [s for s in free if s.output == named.get("out")]
         if len(outputs) > 1:
             outputs = [s for s in outputs if s.output == named.get("out")]
         if len(outputs) != 1:

@@ -36,6 +36,10 @@ class SupplyLevels:
         fed = [self._held[n] for n in self._feeds.get(node, ()) if n in self._held and n != GROUND]
         return max(fed, key=abs) if fed else None
 
+    def held(self, node: str) -> bool:
+        """Whether a voltage source itself holds a node."""
+        return node in self._held
+
     def tied(self, a: str, b: str) -> bool:
         """Whether passives outside the models tie two nodes, not through ground or a voltage source's node."""
         return a == b or self._networks.find(a) == self._networks.find(b)
