@@ -1,7 +1,7 @@
 """Amplifiers whose pins are on nodes that their roles do not allow."""
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import permutations
 
 from xcheck.circuit.elements import GROUND, Source
@@ -50,17 +50,39 @@ class _Misfit:
 
 def misfits(evidence: Evidence) -> dict[str, _Misfit]:
     """By amplifier's name: pins on nodes that their roles do not allow."""
-    levels = SupplyLevels(evidence.circuit)
+    levels = Levels(evidence)
     found: dict[str, _Misfit] = {}
     for amplifier in evidence.partition.amplifiers:
         roles = roles_of(amplifier)
         words = _against(roles, levels)
         if words:
-            found[amplifier.name] = _Misfit(words, _better(roles, levels))
+            on_rail = any(levels.held(roles[role]) and levels.level(roles[role]) for role in ("in+", "in-", "out"))
+            misplaced = levels.held(roles["out"]) or on_rail
+            found[amplifier.name] = _Misfit(words, _better(roles, levels) if misplaced else None)
     return found
 
 
-def _against(roles: Roles, levels: SupplyLevels) -> tuple[str, ...]:
+class Levels:
+    """What the sources outside the amplifiers hold, and what a resistor or inductor feeds from there."""
+
+    def __init__(self, evidence: Evidence) -> None:
+        around = replace(evidence.circuit, elements=around_amplifiers(evidence.partition))
+        self._supplies = SupplyLevels(around)
+
+    def held(self, node: str) -> bool:
+        """Whether a voltage source itself holds a node; ground is held."""
+        return self._supplies.held(node)
+
+    def level(self, node: str) -> float | None:
+        """The DC level of a node, None where no source holds or feeds it."""
+        return self._supplies.level(node)
+
+    def tied(self, a: str, b: str) -> bool:
+        """Whether passives tie two nodes."""
+        return self._supplies.tied(a, b)
+
+
+def _against(roles: Roles, levels: Levels) -> tuple[str, ...]:
     """What speaks against some roles."""
     words = []
     if levels.held(roles["out"]):
@@ -73,7 +95,7 @@ def _against(roles: Roles, levels: SupplyLevels) -> tuple[str, ...]:
     return tuple(words)
 
 
-def _better(roles: Roles, levels: SupplyLevels) -> Roles | None:
+def _better(roles: Roles, levels: Levels) -> Roles | None:
     """Another order of the same nodes that nothing speaks against, None where there is none."""
     names = list(roles)
     fitting = []
@@ -123,7 +145,7 @@ def output_grounded(evidence: Evidence) -> Iterator[Finding]:
     """An amplifier's output on ground or on a supply."""
     wrong = misfits(evidence)
     rails = {n for a in evidence.partition.amplifiers for n in (a.positive_supply, a.negative_supply) if n is not None}
-    levels = SupplyLevels(evidence.circuit)
+    levels = Levels(evidence)
     for amplifier in evidence.partition.amplifiers:
         if _is_explained(wrong, amplifier):
             continue
@@ -142,7 +164,7 @@ def outputs_tied(evidence: Evidence) -> Iterator[Finding]:
     """Two amplifier outputs, or an output and a source, on one node."""
     wrong = misfits(evidence)
     rails = {n for a in evidence.partition.amplifiers for n in (a.positive_supply, a.negative_supply) if n is not None}
-    levels = SupplyLevels(evidence.circuit)
+    levels = Levels(evidence)
     first: dict[str, Amplifier] = {}
     for amplifier in evidence.partition.amplifiers:
         output = amplifier.output

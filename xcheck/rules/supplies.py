@@ -8,9 +8,8 @@ from xcheck.finding import Finding
 from xcheck.notation import engineering
 from xcheck.reviewed import Evidence
 from xcheck.rules.graphs import around_amplifiers, reach
-from xcheck.rules.pins import misfits, place_on
+from xcheck.rules.pins import Levels, misfits, place_on
 from xcheck.rules.unread import is_complete
-from xcheck.stages.supplies import SupplyLevels
 
 
 def supply_missing(evidence: Evidence) -> Iterator[Finding]:
@@ -55,7 +54,7 @@ def _fed(evidence: Evidence) -> set[str]:
 
 def supply_reversed(evidence: Evidence) -> Iterator[Finding]:
     """The positive supply below the negative one."""
-    levels = SupplyLevels(evidence.circuit)
+    levels = Levels(evidence)
     explained = misfits(evidence)
     for amplifier in evidence.partition.amplifiers:
         misfit = explained.get(amplifier.name)
