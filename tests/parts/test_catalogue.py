@@ -8,7 +8,8 @@ LIMITS = {
     "gain": (1e3, 1e8), "gain_bandwidth_hz": (1e4, 1e10), "input_resistance_ohm": (1e3, 1e15),
     "input_capacitance_f": (1e-13, 1e-10), "common_mode_resistance_ohm": (1e6, 1e15),
     "common_mode_capacitance_f": (1e-13, 1e-10), "output_resistance_ohm": (1, 1e4), "slew_rate_v_per_s": (1e3, 1e10),
-    "bias_current_a": (1e-15, 1e-4), "offset_current_a": (1e-15, 1e-5), "supply_min_v": (0.5, 12),
+    "bias_current_a": (1e-15, 1e-4), "offset_current_a": (1e-15, 1e-5),
+    "output_current_a": (1e-3, 1.0), "supply_min_v": (0.5, 12),
     "supply_max_v": (3, 100), "common_mode_below_positive_v": (-1, 5), "common_mode_above_negative_v": (-1, 5),
 }  # fmt: skip
 

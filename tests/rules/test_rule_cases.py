@@ -19,8 +19,10 @@ BY_HAND = {
     "output-at-rail",
     "impedance-disagrees",
     "methods-disagree",
+    "input-outside-common-mode",
+    "output-current-exceeded",
 }
-"""Rules that read what ngspice or two methods say: their evidence is put together in test_rules_on_results.py."""
+"""Rules that read what ngspice or two methods say: in test_rules_on_results.py and test_rules_at_the_point.py."""
 
 ALL = all_cases()
 

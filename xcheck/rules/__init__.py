@@ -7,8 +7,10 @@ deck.
 
 from xcheck.finding import Finding
 from xcheck.reviewed import Evidence
+from xcheck.rules.data_sheets import model_differs_from_data_sheet
 from xcheck.rules.feedback import feedback_missing, feedback_positive
 from xcheck.rules.impedances import impedance_disagrees, methods_disagree, rule_of_thumb_fails
+from xcheck.rules.limits import input_outside_common_mode, output_current_exceeded
 from xcheck.rules.models import amplifier_ideal
 from xcheck.rules.operating_point import (
     not_simulated,
@@ -62,6 +64,14 @@ RULES: tuple[Rule, ...] = (
     Rule("simulation-fails", "warning", "ngspice fails for another reason", simulation_fails),
     Rule("not-simulated", "note", "ngspice was wanted and is not there", not_simulated),
     Rule("output-at-rail", "error", "an output within reach of its supply", output_at_rail),
+    Rule("input-outside-common-mode", "warning", "an input outside its common-mode range", input_outside_common_mode),
+    Rule("output-current-exceeded", "warning", "an output current beyond the data sheet's", output_current_exceeded),
+    Rule(
+        "model-differs-from-data-sheet",
+        "warning",
+        "a model off its data sheet by more than a factor of 3",
+        model_differs_from_data_sheet,
+    ),
     Rule("amplifier-ideal", "warning", "a model lacks what a reported port depends on", amplifier_ideal),
     # what the stages do
     Rule("impedance-disagrees", "error", "simulated and analytic impedance differ", impedance_disagrees),
