@@ -241,7 +241,7 @@ class _Elaboration:
         """Nodes with braces or quotes in their names, as in `net{slash}a`: an expression to ngspice."""
         if "{" not in card.text and "'" not in card.text:
             return
-        plain = words_of(card).plain
+        plain = opened(words_of(card).plain)
         for word in plain[:-1] if card.kind == "x" else plain[:2]:
             if "{" in word.text or "'" in word.text:
                 self.problems.say(
