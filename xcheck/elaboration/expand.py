@@ -22,7 +22,7 @@ from xcheck.elaboration.words import Words, braced, opened, words_of
 from xcheck.errors import CallError
 
 MOST_ELEMENTS = 250_000
-"""Made in all, those counted twice that are kept as an instance's own; far beyond any board."""
+"""Elements and instances made in all, those counted twice that are kept as an instance's own; far beyond any board."""
 DEEPEST_INSTANCE = 60
 
 MAKERS: Mapping[str, Callable[[Card, Problems], Maker | None]] = {
@@ -275,7 +275,8 @@ class _Elaboration:
     def _stop(self, card: Card) -> None:
         self.full = True
         self.problems.say(
-            "syntax", "error", card, None, f"more than {MOST_ELEMENTS} elements; the rest is not elaborated",
+            "syntax", "error", card, None,
+            f"more than {MOST_ELEMENTS} elements and instances; the rest is not elaborated",
             "review one block at a time with --subckt",
         )  # fmt: skip
 
@@ -289,6 +290,7 @@ class _Elaboration:
             origin = Origin(call.card, context.path)
             self.elements.append(Device(name, "x", nodes, (), call.subckt.key, fault or "undefined", origin))
             return
+        self.made += 1
         path = (*context.path, name)
         scope = context.scope
         functions = self._functions(definition.body)
