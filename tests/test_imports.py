@@ -13,13 +13,13 @@ MODULES = {
     for path in sorted(PACKAGE.rglob("*.py"))
 }
 FLOW = """
-    version errors place finding options notation parts deck circuit elaboration linearisation stages topologies
-    impedance simulate results frame reviewed rules report directives grid reviewing cli __main__
+    version errors place finding options notation parts deck project circuit elaboration linearisation stages
+    topologies impedance simulate results frame reviewed rules report directives grid reviewing cli __main__
 """
 ORDER = tuple(FLOW.split())
 """The data flow: a part imports only parts before it."""
 ENTRY = ("xcheck", "xcheck.cli", "xcheck.__main__")
-HEAVY = ("numpy", "scipy", "pandas", "PySpice", "matplotlib", "rich", "sympy")
+HEAVY = ("numpy", "scipy", "pandas", "PySpice", "matplotlib", "rich", "sympy", "pydantic")
 
 
 def part_of(module: str) -> str:

@@ -122,7 +122,7 @@ def main() -> None:
 @main.command()
 @click.argument("decks", nargs=-1, required=True, type=click.Path(path_type=Path))
 @click.option("--at", "spots", type=Frequency(), multiple=True, help="A frequency to report at (repeatable).")
-@click.option("--tolerance", type=Tolerance(), default="1%", show_default=True, help="Analytic against simulated.")
+@click.option("--tolerance", type=Tolerance(), help="Analytic against simulated; else the project file's, else 1%.")
 @click.option("--format", "form", type=click.Choice(["text", "json"]), default="text", show_default=True)
 @click.option("--out", type=click.Path(path_type=Path), help="Write the report to this file instead.")
 @click.option(

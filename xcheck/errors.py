@@ -3,6 +3,7 @@
 XcheckError                 anything xcheck raises on purpose; exit status 2
 +-- DeckUnreadable          a deck cannot be read at all (missing, a device, no permission, too large)
 +-- CallError               the call itself is wrong (an unknown stage, a band upside down)
++-- ProjectError            a project file that cannot be read or says what it may not
 +-- OutputError             a report or picture cannot be written
 +-- EngineError             ngspice is missing, too old, crashed, hung or said no
 +-- SingularCircuit         the linear equations have no unique solution
@@ -21,6 +22,10 @@ class DeckUnreadable(XcheckError):
 
 class CallError(XcheckError):
     """The call is wrong: an option, a name, a range."""
+
+
+class ProjectError(CallError):
+    """A project file is wrong: every fault on a line of its own, with its key."""
 
 
 class OutputError(XcheckError):

@@ -19,8 +19,8 @@ from xcheck.impedance.closed_form import closed_forms
 from xcheck.impedance.return_ratio import return_ratios
 from xcheck.impedance.types import ReturnRatio
 from xcheck.linearisation import Linearised, linearise
-from xcheck.options import Options
-from xcheck.parts.catalogue import find
+from xcheck.options import DEFAULT_TOLERANCE, Options
+from xcheck.project import Project, find_project, read_project
 from xcheck.results.formed import impedances
 from xcheck.results.rawfile import read_raw
 from xcheck.reviewed import DeckReview, Evidence, Outcome
@@ -29,7 +29,7 @@ from xcheck.simulate import find_engine, measure
 from xcheck.simulate.operate import QUANTITIES, Operated, operate
 from xcheck.simulate.types import EngineInfo, Simulation
 from xcheck.stages import find_amplifiers, split
-from xcheck.stages.standins import stated, with_stand_ins
+from xcheck.stages.standins import STATED, stated, with_stand_ins
 from xcheck.stages.types import Amplifier, Partition
 from xcheck.topologies import classify
 
@@ -91,22 +91,31 @@ def _review_deck(path: Path, options: Options, engine: EngineInfo, progress: Pro
         deck = read_deck(path, include_dirs=options.include_dirs)
     except DeckUnreadable as error:
         return DeckReview(str(path), "", None, (), unreadable=str(error))
-    evidence, findings = analyse(deck, options, engine, progress)
+    file = find_project(path)
+    project = Project() if file is None else read_project(file)
+    evidence, findings = analyse(deck, options, engine, progress, project)
     return DeckReview(deck.path, deck.title, evidence, findings)
 
 
 def analyse(
-    deck: Deck, options: Options, engine: EngineInfo, progress: Progress | None = None
+    deck: Deck,
+    options: Options,
+    engine: EngineInfo,
+    progress: Progress | None = None,
+    project: Project | None = None,
 ) -> tuple[Evidence, tuple[Finding, ...]]:
     """All that can be known of one deck, and what the rules say of it, in order of place."""
+    project = project or Project()
     circuit = elaborate(deck, options.subckt)
     operated = _operated(deck, circuit, engine)
     linear = linearise(circuit, operated.point) if operated.point is not None else Linearised(circuit)
     declared, refusals = band_of(deck.directives)
-    band = options.band or declared
+    band = options.band or declared or project.band
     in_band = band or DEFAULT_BAND
-    amplifiers, amplifier_findings = find_amplifiers(linear.circuit, circuit)
-    analytic, amplifiers = _with_models(linear.circuit, amplifiers, operated)
+    tolerance = options.tolerance or project.tolerance or DEFAULT_TOLERANCE
+    options = replace(options, tolerance=tolerance)
+    amplifiers, amplifier_findings = find_amplifiers(linear.circuit, circuit, project)
+    analytic, amplifiers = _with_models(linear.circuit, amplifiers, operated, project)
     partition = split(analytic, amplifiers, amplifier_findings, extra_ports=options.ports, band=in_band)
     frequency = comparison_grid(circuit.analyses, options.spots)
     formed = None
@@ -136,7 +145,7 @@ def analyse(
         forms,
         {} if simulation is None else simulation.values,
         {} if simulation is None else simulation.unmeasured,
-        tolerance=options.tolerance,
+        tolerance=tolerance,
         data_sheet=_by_data_sheet(partition, options, frequency, in_band),
     )
     evidence = Evidence(
@@ -165,15 +174,19 @@ def _operated(deck: Deck, circuit: Circuit, engine: EngineInfo) -> Operated:
 
 
 def _with_models(
-    circuit: Circuit, amplifiers: Sequence[Amplifier], operated: Operated
+    circuit: Circuit, amplifiers: Sequence[Amplifier], operated: Operated, project: Project
 ) -> tuple[Circuit, tuple[Amplifier, ...]]:
     """The circuit with stand-ins for amplifiers whose own model is not there, or is nonlinear while no operating point
-    is known. At an operating point what has no linear model stays without: a simulation speaks of it alone."""
-    chosen = {
-        a.name: stated(find(a.subckt), a.open_loop.values)
-        for a in amplifiers
-        if a.open_loop.model is None and (operated.point is None or a.elements == (a.name,))
-    }
+    is known, or whose values the project overrides. At an operating point what has no linear model stays without: a
+    simulation speaks of it alone."""
+    chosen = {}
+    for a in amplifiers:
+        own = project.amplifiers.get(a.subckt)
+        wanted = {name: v for name, v in (own.values if own is not None else {}).items() if name in STATED}
+        if a.open_loop.model is None and (operated.point is None or a.elements == (a.name,)):
+            chosen[a.name] = stated(a.part, a.open_loop.values, wanted)
+        elif wanted:
+            chosen[a.name] = stated(None, a.open_loop.values, wanted)
     return with_stand_ins(circuit, amplifiers, chosen) if chosen else (circuit, tuple(amplifiers))
 
 
@@ -181,7 +194,7 @@ def _by_data_sheet(
     partition: Partition, options: Options, frequency: Real, band: tuple[float, float]
 ) -> dict[str, Complex]:
     """The ports' impedances with data sheets in place of models, by subject, for stages whose parts are all known."""
-    parts = {a.name: find(a.subckt) for a in partition.amplifiers}
+    parts = {a.name: a.part for a in partition.amplifiers}
     known = {name: part for name, part in parts.items() if part is not None and part.kind == "voltage-feedback"}
     whole = [s for s in partition.stages if all(a.name in known for a in s.amplifiers)]
     if not whole:

@@ -4,7 +4,7 @@ from collections.abc import Iterator
 
 from xcheck.finding import Finding
 from xcheck.notation import engineering
-from xcheck.parts.catalogue import Part, find
+from xcheck.parts.catalogue import Part
 from xcheck.reviewed import Evidence
 from xcheck.stages.types import Amplifier
 
@@ -24,7 +24,7 @@ def model_differs_from_data_sheet(evidence: Evidence) -> Iterator[Finding]:
     lacks altogether is `amplifier-ideal`'s affair."""
     said: set[tuple[str, str]] = set()
     for amplifier in evidence.partition.amplifiers:
-        part = find(amplifier.subckt)
+        part = amplifier.part
         if part is None or part.kind != "voltage-feedback":
             continue
         apart = list(_apart(amplifier, part))

@@ -8,6 +8,7 @@ from xcheck.circuit.arrays import Complex, Real
 from xcheck.finding import Finding
 from xcheck.impedance.types import ClosedForm, PortAnswer
 from xcheck.notation import engineering, percent, polar
+from xcheck.options import DEFAULT_TOLERANCE
 from xcheck.reviewed import Evidence
 from xcheck.rules.operating_point import rail_of
 
@@ -26,6 +27,7 @@ RULE_OFF_BY = 0.1
 def impedance_disagrees(evidence: Evidence) -> Iterator[Finding]:
     """Simulated against analytic, beyond the tolerance somewhere on the grid."""
     amplifiers = {stage.name: stage.amplifiers for stage in evidence.partition.stages}
+    tolerance = evidence.options.tolerance or DEFAULT_TOLERANCE
     for answer in evidence.answers:
         gap, worst = answer.difference, _worst(answer.difference)
         if answer.verdict != "disagrees" or gap is None or worst is None:
@@ -43,7 +45,7 @@ def impedance_disagrees(evidence: Evidence) -> Iterator[Finding]:
             answer.port.place,
             f"{_port(answer)} is {_value(answer.simulated, worst)} as simulated, "
             f"{_value(answer.analytic, worst)} by {method}, at {_hertz(answer, worst)}: "
-            f"they differ by {percent(float(gap[worst]))}, tolerance {percent(evidence.options.tolerance)}",
+            f"they differ by {percent(float(gap[worst]))}, tolerance {percent(tolerance)}",
             subject=answer.port.subject,
             cause="output-at-rail" if at_rail else "unknown",
             advice=advice,

@@ -5,7 +5,7 @@ from collections.abc import Iterator, Mapping
 from xcheck.circuit.elements import GROUND, Controlled, Coupling, Device, Passive, Source
 from xcheck.finding import Finding
 from xcheck.notation import engineering
-from xcheck.parts.catalogue import Part, find
+from xcheck.parts.catalogue import Part
 from xcheck.reviewed import Evidence
 from xcheck.rules.operating_point import OPERATING_POINT
 from xcheck.rules.pins import place_on
@@ -36,7 +36,7 @@ def input_outside_common_mode(evidence: Evidence) -> Iterator[Finding]:
         high, low = volts[positive], volts[negative]
         if not high > low:
             continue
-        part = find(amplifier.subckt)
+        part = amplifier.part
         for what, node in (("non-inverting", amplifier.non_inverting), ("inverting", amplifier.inverting)):
             if node not in volts:
                 continue
@@ -72,7 +72,7 @@ def output_current_exceeded(evidence: Evidence) -> Iterator[Finding]:
     """An output current at the operating point beyond the data sheet's."""
     volts = volts_of(evidence)
     for amplifier in evidence.partition.amplifiers if volts else ():
-        part = find(amplifier.subckt)
+        part = amplifier.part
         most = part.values.get("output_current_a") if part is not None else None
         if part is None or most is None:
             continue

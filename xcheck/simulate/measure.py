@@ -1,7 +1,7 @@
 """Measuring every port of a deck with ngspice."""
 
 import math
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -87,6 +87,9 @@ def as_written(port: Port, circuit: Circuit, linear: Circuit) -> Port:
         device = circuit.by_name.get(element.origin.device) if element is not None else None
         if device is None:
             original = circuit.by_name.get(terminal.element)
+            if original is None:
+                inside.update((t, None) for t in _of_the_model(terminal.element, port.node, circuit))
+                continue
             known = isinstance(original, Device) and terminal.index < 0 and port.node not in original.sensing
             if not known:  # a behavioural resistor senses its own ends once it is linear
                 inside[terminal] = None
@@ -95,6 +98,16 @@ def as_written(port: Port, circuit: Circuit, linear: Circuit) -> Port:
         if port.node in getattr(device, "sensing", ()):
             inside[Terminal(device.name, -1)] = None
     return replace(port, inside=tuple(inside))
+
+
+def _of_the_model(stand_in: str, node: str, circuit: Circuit) -> Iterator[Terminal]:
+    """The terminals on a node of the model that a stand-in's element is there for."""
+    amplifier = stand_in.rpartition(".")[0]
+    for element in circuit.at.get(node, ()):
+        if element.name == amplifier or amplifier in element.origin.path:
+            yield from (Terminal(element.name, k) for k, end in enumerate(element.nodes) if end == node)
+            if node in getattr(element, "sensing", ()):
+                yield Terminal(element.name, -1)
 
 
 def why_not(sane: Harmless, circuit: Circuit) -> str:

@@ -7,9 +7,10 @@ import numpy as np
 
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance
 from xcheck.finding import Finding
+from xcheck.project import Project
 from xcheck.stages.bare import bare_amplifiers
 from xcheck.stages.boosters import with_boosters
-from xcheck.stages.directives import PinDirective, pin_directives
+from xcheck.stages.directives import PinDirective, pin_directives, project_pins
 from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins
 from xcheck.stages.missing import missing_amplifiers
 from xcheck.stages.model import LinearModel, bench, measured, open_loop
@@ -40,15 +41,20 @@ designer made poor on purpose."""
 
 
 def find_amplifiers(
-    circuit: Circuit, written: Circuit | None = None
+    circuit: Circuit, written: Circuit | None = None, project: Project | None = None
 ) -> tuple[tuple[Amplifier, ...], tuple[Finding, ...]]:
     """All amplifiers in deck order, and what is wrong with directives that name them or with their pins.
 
-    written: the circuit as the deck has it, where `circuit` is the same at its operating point."""
+    written: the circuit as the deck has it, where `circuit` is the same at its operating point; project: what the
+    project file says of pins and parts."""
+    project = project or Project()
     directives, findings = pin_directives(circuit)
+    told, faults = project_pins(circuit, project)
+    directives = {**told, **directives}
     search = _Search(circuit, written or circuit, directives)
     amplifiers = with_boosters(search.run(), circuit, written or circuit, search.held.still)
-    return amplifiers, (*findings, *search.findings)
+    known = tuple(replace(a, part=project.part_of(a.subckt)) for a in amplifiers)
+    return known, (*findings, *faults, *search.findings)
 
 
 class _Search:

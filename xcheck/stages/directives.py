@@ -17,6 +17,7 @@ from xcheck.circuit.elements import Circuit, Controlled, Device, Instance
 from xcheck.deck.cards import Card, Directive
 from xcheck.finding import Finding
 from xcheck.place import Place
+from xcheck.project import Project
 from xcheck.stages.pins import SIGNAL, Role
 
 FORM = "write it as `* xcheck: amplifier XU1 in+=PIN in-=PIN out=PIN`, with v+=PIN v-=PIN where there are supplies"
@@ -43,6 +44,30 @@ def pin_directives(circuit: Circuit) -> tuple[dict[str, PinDirective], tuple[Fin
             if fault:
                 findings.append(Finding("syntax", "error", directive.place, fault, name, advice=FORM))
     return found, tuple(findings)
+
+
+def project_pins(circuit: Circuit, project: Project) -> tuple[dict[str, PinDirective], tuple[Finding, ...]]:
+    """What a project file says of pins, by flat name of the instance, and what of it does not fit the subcircuit."""
+    found: dict[str, PinDirective] = {}
+    faults: dict[Finding, None] = {}
+    place = Place(project.path, 1, 1, 1)
+    for instance in circuit.instances:
+        stated = project.amplifiers.get(instance.subckt)
+        if stated is None or not stated.pins:
+            continue
+        names = [pin for pin, _ in instance.pins]
+        by_place: dict[str | int, str] = {k + 1: name for k, name in enumerate(names)}
+        pins = {role: by_place.get(pin, str(pin)) for role, pin in stated.pins.items()}
+        strange = [f"{pin}" for pin in pins.values() if pin not in names]
+        if strange:
+            fault = f"amplifiers.{instance.subckt}.pins: there is no pin `{strange[0]}` (it has {' '.join(names)})"
+            faults[Finding("syntax", "error", place, fault, instance.subckt, advice="name a pin of the subcircuit")] = (
+                None
+            )
+        else:
+            roles: dict[Role, str] = {role: str(pins[role]) for role in get_args(Role) if role in pins}
+            found[instance.name] = PinDirective(roles, place)
+    return found, tuple(faults)
 
 
 def port_directives(circuit: Circuit) -> Iterator[tuple[str, Directive]]:

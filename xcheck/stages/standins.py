@@ -29,14 +29,19 @@ FIRST_SIEMENS = 1e-3
 SECOND_OHM = 1e3
 
 
-def stated(part: Part | None, own: Mapping[str, Quantity]) -> dict[str, Quantity]:
-    """The values of a stand-in: the data sheet's, else the model's own, else assumed ones."""
+def stated(
+    part: Part | None, own: Mapping[str, Quantity], project: Mapping[str, float] | None = None
+) -> dict[str, Quantity]:
+    """The values of a stand-in: the project's, else the data sheet's, else the model's own, else assumed ones."""
     found: dict[str, Quantity] = {}
+    project = project or {}
     sheet = dict(part.values) if part is not None else {}
     if "second_pole_hz" not in sheet and {"phase_margin_deg", "gain_bandwidth_hz"} <= sheet.keys():
         sheet["second_pole_hz"] = second_pole(sheet["gain_bandwidth_hz"], sheet["phase_margin_deg"])
     for name in STATED:
-        if name in sheet:
+        if name in project:
+            found[name] = Quantity(project[name], "project")
+        elif name in sheet:
             found[name] = Quantity(sheet[name], "data sheet")
         elif name in own and not isinstance(own[name].value, tuple):
             found[name] = own[name]

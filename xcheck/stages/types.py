@@ -7,6 +7,7 @@ from typing import Literal, Protocol
 from xcheck.circuit.arrays import Complex, Real
 from xcheck.circuit.elements import Circuit
 from xcheck.finding import Finding
+from xcheck.parts.catalogue import Part
 from xcheck.place import Place
 
 ValueOrigin = Literal["deck", "measured", "project", "data sheet", "assumed"]
@@ -70,7 +71,7 @@ class Amplifier:
 
     subckt: the name of its subcircuit, '' for a bare source; elements: flat names of its own elements;
     gain_element: the controlled source whose return ratio stands for the amplifier; place: its instance
-    card, or its E source's.
+    card, or its E source's; part: the data sheet that holds for it.
     """
 
     name: str
@@ -85,6 +86,7 @@ class Amplifier:
     gain_element: str
     open_loop: OpenLoop
     place: Place
+    part: Part | None = None
 
 
 @dataclass(frozen=True, slots=True)
