@@ -23,7 +23,7 @@ from pathlib import Path
 from types import MappingProxyType
 
 from xcheck.errors import ProjectError
-from xcheck.parts.catalogue import Part, find
+from xcheck.parts.catalogue import Part, catalogue, find
 
 NAME = "xcheck.toml"
 
@@ -87,13 +87,11 @@ def read_project(path: Path) -> Project:
     for name, entry in tables.parts.items():
         base = find(entry.like or name)
         if entry.like and base is None:
-            near = ", ".join(get_close_matches(entry.like.lower(), list(parts), n=1))
-            raise ProjectError(
-                f"{path}: parts.{name}.like: no part `{entry.like}` is known{near and f', did you mean {near}?'}"
-            )
-        parts[name.lower()] = _part(
-            name.lower(), base, entry.values(), entry.data_sheet, entry.kind, entry.sections, path
-        )
+            near = get_close_matches(entry.like.lower(), list(catalogue()), n=1)
+            hint = f"; did you mean `{near[0]}`?" if near else ""
+            raise ProjectError(f"{path}: parts.{name}.like: no part `{entry.like}` is known{hint}")
+        own = entry.values()
+        parts[name.lower()] = _part(name.lower(), base, own, entry.data_sheet, entry.kind, entry.sections, path)
     amplifiers = {
         name.lower(): StatedAmplifier(MappingProxyType(entry.pins), entry.part, MappingProxyType(entry.values()))
         for name, entry in tables.amplifiers.items()
