@@ -5,6 +5,7 @@ The scale factors are those of chapter 2 of the ngspice manual; the traps were s
 
 import re
 from dataclasses import dataclass
+from functools import lru_cache
 
 SCALES = {
     "t": 1e12, "g": 1e9, "meg": 1e6, "k": 1e3, "mil": 25.4e-6, "m": 1e-3, "u": 1e-6, "n": 1e-9, "p": 1e-12,
@@ -28,6 +29,7 @@ class Number:
     rest: str
 
 
+@lru_cache(maxsize=65536)  # decks use the same few values over and over
 def read_number(text: str) -> Number | None:
     """The number that `text` begins with, None where it begins with none."""
     match = _NUMBER.match(text)
