@@ -11,6 +11,7 @@ from xcheck.project import Project
 from xcheck.stages.bare import bare_amplifiers
 from xcheck.stages.boosters import with_boosters
 from xcheck.stages.directives import PinDirective, pin_directives, project_pins
+from xcheck.stages.fit import fitted
 from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins
 from xcheck.stages.missing import missing_amplifiers
 from xcheck.stages.model import LinearModel, bench, measured, open_loop
@@ -26,7 +27,7 @@ from xcheck.stages.pins import (
     speak_of_an_amplifier,
     supplies,
 )
-from xcheck.stages.structure import Structure, is_nonlinear
+from xcheck.stages.structure import Structure
 from xcheck.stages.supplies import SupplyLevels
 from xcheck.stages.types import Amplifier, OpenLoop
 from xcheck.stages.weighing import AT_THE_POINT, IN_PRINCIPLE, LINEAR, Evidence, Written, weigh
@@ -112,7 +113,7 @@ class _Search:
         named = written[0].roles if written else {}
         seen, how = self._seen(instance, named)
         if told is None and seen is None:
-            if not named or not is_nonlinear(instance) or not _looks_like_an_amplifier(instance.local):
+            if not named or not self.structure.nonlinear(instance) or not _looks_like_an_amplifier(instance.local):
                 return None
             if inner and not _is_wrapper(instance, inner[0], self.members):
                 return None
@@ -128,7 +129,7 @@ class _Search:
         found = self._fitting(instance, named, structure.at_the_point(instance, named, LEAST_GAIN))
         if found is None and set(SIGNAL) <= named.keys() and self._is_fed_back(instance, named):
             found = self._fitting(instance, named, structure.at_the_point(instance, named, LEAST_NAMED_GAIN))
-        if not is_nonlinear(instance):
+        if not self.structure.nonlinear(instance):
             return found, LINEAR
         if found is None or not _is_differential(found):
             found = self._fitting(instance, named, structure.in_principle(instance, named, LEAST_NOMINAL_GAIN))
@@ -182,8 +183,8 @@ class _Search:
             loop = OpenLoop({}, None, exact=False, reason=reason)
         else:
             loop = self._open_loop(instance, signal)
-            if is_nonlinear(instance):
-                loop = measured(loop)
+            if self.structure.nonlinear(instance):
+                loop = fitted(measured(loop))
         first = next((e for e in members if isinstance(e, Controlled)), None) or next(
             (e for e in members if isinstance(e, Device)), members[0]
         )

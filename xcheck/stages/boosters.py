@@ -12,6 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance, Passive, Source
+from xcheck.stages.fit import fitted
 from xcheck.stages.model import LinearModel, bench, measured, open_loop
 from xcheck.stages.types import Amplifier, OpenLoop
 
@@ -167,7 +168,7 @@ def _open_loop(
     around = {node for _, node in instance.pins} | {n for e in outer for n in e.nodes if ":" not in n}
     held = [PLUS, MINUS, *sorted(n for n in around if n in still and n != GROUND)]
     try:
-        return measured(open_loop(LinearModel(bench(elements, held), PLUS, MINUS, OUTPUT)))
+        return fitted(measured(open_loop(LinearModel(bench(elements, held), PLUS, MINUS, OUTPUT))))
     except (np.linalg.LinAlgError, KeyError):
         return OpenLoop({}, None, exact=False, reason=f"the equations of `{amplifier.name}` alone have no solution")
 

@@ -43,6 +43,10 @@ class Structure:
             self.found[key] = signal_pins(linear, [pin for pin, _ in instance.pins], least, loose)
         return self.found[key]
 
+    def nonlinear(self, instance: Instance) -> bool:
+        """Whether an instance holds devices, be they linear ones by now."""
+        return any(isinstance(e, Device) for e in self.written.get(instance.name, instance).local)
+
     def loose(self, instance: Instance, named: Mapping[Role, str]) -> tuple[str, ...]:
         """Pins on nodes that nothing else touches, other than signals and supplies: they are not held by anything."""
         if len(instance.pins) < FEWEST_WITH_OTHERS:
@@ -62,8 +66,3 @@ class Structure:
             for node in dict.fromkeys((*element.nodes, *sensing)):
                 found.setdefault(node, []).append(element.origin.path)
         return found
-
-
-def is_nonlinear(instance: Instance) -> bool:
-    """Whether an instance holds devices, or what stands for them at the operating point."""
-    return any(isinstance(e, Device) or e.origin.device for e in instance.local)
