@@ -47,6 +47,10 @@ class SignalPins:
     balance: float = 1.0
 
 
+MOST_TRIED = 40
+"""Controlled sources that are killed in turn to find the one that the gain hangs on; each costs a solution."""
+
+
 def gains_to(
     elements: Sequence[Element], pins: Sequence[str], output: str, loose: Sequence[str] = ()
 ) -> dict[str, float]:
@@ -147,7 +151,7 @@ def gain_element(elements: Sequence[Element], pins: Sequence[str], inputs: tuple
     alive = abs(gains_to(elements, pins, output).get(pin, 0.0))
     sources = [e for e in elements if isinstance(e, Controlled)]
     nearest = sorted(sources, key=lambda e: not set(inputs) & set(e.sensing))
-    for source in nearest:
+    for source in nearest[:MOST_TRIED]:
         dead = [replace(e, terms=()) if e is source else e for e in elements]
         try:
             gain = gains_to(dead, pins, output).get(pin, 0.0)
