@@ -167,13 +167,46 @@ def stages(deck: Path, **settings: Any) -> None:
 
 
 @main.command()
-@DECK
+@click.argument("deck", required=False, type=click.Path(path_type=Path))
+@click.option("--write-model", "part", metavar="PART", help="Print a subcircuit with a part's values instead.")
+@click.option("--railed", is_flag=True, help="With --write-model: its output is limited to the supplies.")
+@ENGINE
 @_shared
-def amplifiers(deck: Path, **settings: Any) -> None:
-    """Show the open-loop values of every amplifier, and where each comes from."""
-    from xcheck.report import listing
+def amplifiers(deck: Path | None, part: str | None, railed: bool, **settings: Any) -> None:
+    """Show the open-loop values of every amplifier: by data sheet, as modelled, and, of a nonlinear model, as measured
+    by ngspice at the deck's operating point.
 
-    click.echo(listing.amplifiers(_evidence(deck, settings)), nl=False)
+    \b
+    Examples:
+      xcheck amplifiers board/preamp.cir
+      xcheck amplifiers --write-model tl072 > models/tl072.lib
+    """
+    if part is not None:
+        _write(_model_card(part, deck, railed), None)
+        return
+    if deck is None:
+        raise CallError("a deck is wanted, or --write-model PART")
+    from xcheck.report.amplifiers import amplifiers as table
+
+    click.echo(table(_evidence(deck, {**settings, "ports_measured": False})), nl=False)
+
+
+def _model_card(name: str, deck: Path | None, railed: bool) -> str:
+    from difflib import get_close_matches
+
+    from xcheck.parts.catalogue import catalogue
+    from xcheck.project import Project, find_project, read_project
+    from xcheck.report.model_card import model_card
+
+    file = find_project(deck or Path("deck.cir"))
+    project = Project() if file is None else read_project(file)
+    part = project.part_of(name)
+    if part is None:
+        near = get_close_matches(name.lower(), [*project.parts, *catalogue()], n=3)
+        raise CallError(f"no data sheet of `{name}` is known" + (f"; did you mean {', '.join(near)}?" if near else ""))
+    if part.kind != "voltage-feedback":
+        raise CallError(f"`{name}` is a {part.kind} part; the model would be that of a voltage-feedback op-amp")
+    return model_card(part, railed=railed)
 
 
 @main.command()
@@ -229,7 +262,7 @@ def _evidence(deck: Path, settings: dict[str, Any]) -> Any:
     from xcheck.errors import DeckUnreadable
     from xcheck.reviewing import review as run
 
-    outcome = run(deck, options=_options({**settings, "engine": "none"}))
+    outcome = run(deck, options=_options({"engine": "none", **settings}))
     evidence = outcome.decks[0].evidence
     if evidence is None:
         raise DeckUnreadable(outcome.decks[0].unreadable)

@@ -13,7 +13,8 @@ EngineChoice = Literal["auto", "ngspice", "none"]
 @dataclass(frozen=True, slots=True)
 class Options:
     """spots, band: Hz; tolerance: relative difference (0.01 is 1 %), None: as the project file says; band None: as the
-    deck declares; results: a raw file to take simulated values from, instead of running ngspice."""
+    deck declares; results: a raw file to take simulated values from, instead of running ngspice; ports_measured:
+    whether the ports are simulated at all, where the operating point alone is wanted."""
 
     spots: tuple[float, ...] = ()
     band: tuple[float, float] | None = None
@@ -23,3 +24,4 @@ class Options:
     include_dirs: tuple[Path, ...] = ()
     ports: tuple[str, ...] = ()
     results: Path | None = None
+    ports_measured: bool = True

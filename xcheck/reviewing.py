@@ -130,7 +130,7 @@ def analyse(
     simulation = None
     if formed is not None:
         simulation = Simulation(engine, formed.values, formed.not_formed)
-    elif engine.available and any(stage.ports for stage in partition.stages):
+    elif options.ports_measured and engine.available and any(stage.ports for stage in partition.stages):
 
         def tell(done: int, total: int) -> None:
             if progress is not None:
