@@ -180,7 +180,7 @@ def _with_models(
     is known, or whose values the project overrides. At an operating point what has no linear model stays without: a
     simulation speaks of it alone."""
     chosen = {}
-    for a in amplifiers:
+    for a in (a for a in amplifiers if a.kind == "voltage-feedback"):
         own = project.amplifiers.get(a.subckt)
         wanted = {name: v for name, v in (own.values if own is not None else {}).items() if name in STATED}
         if a.open_loop.model is None and (operated.point is None or a.elements == (a.name,)):

@@ -220,5 +220,5 @@ def test_the_published_series_shunt_amplifier() -> None:
 
 def test_every_topology_has_a_name_a_source_and_a_rule() -> None:
     names = [t.name for t in TOPOLOGIES]
-    assert len(set(names)) == len(names) == 12
+    assert len(set(names)) == len(names) == 13
     assert all(t.source and t.input_rule and t.output_rule for t in TOPOLOGIES)

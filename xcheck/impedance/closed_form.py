@@ -175,6 +175,8 @@ class _Evaluation:
         if topology is None or not topology.has_form:
             raise NotPlaced(f"the topology is {'unclassified' if topology is None else topology.name}")
         loop = stage.amplifiers[0].open_loop
+        if stage.amplifiers[0].kind == "current-feedback":
+            raise NotPlaced("the closed forms are those of voltage feedback, and the amplifier feeds back a current")
         if loop.model is None:
             raise NotPlaced(loop.reason)
         shared = [name for name in stage.elements if len(self.surroundings.owners[name]) > 1]

@@ -79,7 +79,7 @@ def _deck(review: DeckReview) -> dict[str, Any]:
 def amplifier(a: Amplifier) -> dict[str, Any]:
     """An amplifier with its pins, evidence and open-loop values."""
     return {
-        "name": a.name, "model": a.subckt, "non_inverting": a.non_inverting, "inverting": a.inverting,
+        "name": a.name, "model": a.subckt, "kind": a.kind, "non_inverting": a.non_inverting, "inverting": a.inverting,
         "output": a.output, "positive_supply": a.positive_supply, "negative_supply": a.negative_supply,
         "evidence": list(a.evidence),
         "open_loop": {name: _quantity(q) for name, q in a.open_loop.values.items()},

@@ -89,7 +89,7 @@ def feedback_missing(evidence: Evidence) -> Iterator[Finding]:
         return
     explained = {a.name for stage, _, _ in _positive(evidence) for a in stage.amplifiers} | misfits(evidence).keys()
     driven = _driven_at_ac(evidence)
-    for amplifier in (a for a in without if a.name not in explained):
+    for amplifier in (a for a in without if a.name not in explained and a.kind != "transconductance"):
         meant = _why_meant(evidence, amplifier) or _reference_input(evidence, amplifier, driven)
         message = (
             f"no way leads from the output of {amplifier.name}, node `{amplifier.output}`, to its inverting input, "

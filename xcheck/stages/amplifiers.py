@@ -12,10 +12,12 @@ from xcheck.stages.bare import bare_amplifiers
 from xcheck.stages.boosters import with_boosters
 from xcheck.stages.directives import PinDirective, pin_directives, project_pins
 from xcheck.stages.fit import fitted
+from xcheck.stages.kinds import kind_of
 from xcheck.stages.macromodel import LEAST_GAIN, SignalPins, other_pins
 from xcheck.stages.missing import missing_amplifiers
 from xcheck.stages.model import LinearModel, bench, measured, open_loop
 from xcheck.stages.nodes import held_still
+from xcheck.stages.packages import members_of, sections
 from xcheck.stages.pins import (
     OTHERS,
     POWER,
@@ -36,6 +38,8 @@ LEAST_NOMINAL_GAIN = 100.0
 """Where nominal values stand for devices: a gain is then no size, only a sign that there is a way."""
 LEAST_BALANCE = 0.5
 """Of the gain from one input against that from the other, in a model of transistors."""
+FEWEST_OF_TWO = 6
+"""Pins of a package of two op-amps: two times two inputs and an output; supplies may be missing."""
 LEAST_NAMED_GAIN = 10.0
 """What is enough where pin names or a comment tell an op-amp and the deck closes a loop around it: a part that the
 designer made poor on purpose."""
@@ -55,6 +59,7 @@ def find_amplifiers(
     search = _Search(circuit, written or circuit, directives)
     amplifiers = with_boosters(search.run(), circuit, written or circuit, search.held.still)
     known = tuple(replace(a, part=project.part_of(a.subckt)) for a in amplifiers)
+    known = tuple(replace(a, kind=a.part.kind) if a.part is not None else a for a in known)
     return known, (*findings, *faults, *search.findings)
 
 
@@ -64,12 +69,13 @@ class _Search:
 
     def __init__(self, circuit: Circuit, written: Circuit, directives: Mapping[str, PinDirective]) -> None:
         self.circuit = circuit
-        self.structure = Structure(circuit, written)
         self.directives = directives
         self.findings: list[Finding] = []
         self.held = held_still(circuit, _follows)
+        self.structure = Structure(circuit, written, self.held.still)
         self.levels = SupplyLevels(circuit)
         self.loops: dict[tuple[object, ...], OpenLoop] = {}
+        self.kinds: dict[int, tuple[OpenLoop, str]] = {}
         self.devices: dict[int, tuple[Device, ...]] = {}
         self.members: dict[str, list[Element]] = {}
         for element in circuit.elements:
@@ -80,9 +86,10 @@ class _Search:
         below: dict[str, list[Amplifier]] = {}
         for instance in reversed(self.circuit.instances):
             inner = below.pop(instance.name, [])
-            found = self._by_instance(instance, inner)
+            one = self._by_instance(instance, inner)
+            found = [one] if one is not None else [] if inner else self._package(instance)
             parent = instance.origin.path[-1] if instance.origin.path else ""
-            below.setdefault(parent, []).extend(inner if found is None else [found])
+            below.setdefault(parent, []).extend(found or inner)
         amplifiers = below.get("", [])
         missing, doubts = missing_amplifiers(self.circuit, self.levels)
         amplifiers += missing
@@ -107,6 +114,27 @@ class _Search:
         if evidence.conflict:
             self.findings.append(_uncertain(instance, evidence.conflict))
         return self._amplifier(instance, evidence)
+
+    def _package(self, instance: Instance) -> list[Amplifier]:
+        """The op-amps of an instance that holds several, named after it and numbered."""
+        if instance.name in self.directives or len(instance.pins) < FEWEST_OF_TWO:
+            return []
+        structure, nodes = self.structure, dict(instance.pins)
+        how = AT_THE_POINT if structure.nonlinear(instance) else LINEAR
+        judged = structure.at_the_point(instance, {}, LEAST_GAIN)
+        if len(judged) < 2 and structure.nonlinear(instance):
+            how, judged = IN_PRINCIPLE, structure.in_principle(instance, {}, LEAST_NOMINAL_GAIN)
+        free = [s for s in judged if nodes[s.output] not in self.held.reasons and _is_differential(s)]
+        found = []
+        several = sections(free)
+        own = members_of(instance.local, [p for p, _ in instance.pins], several) if several else []
+        for number, (seen, names) in enumerate(zip(several, own, strict=True), 1):
+            evidence = weigh(instance, seen, how, (), None)
+            if evidence is not None:
+                one = self._amplifier(instance, evidence, structure.loose(instance, {}))
+                elements = tuple(n for n in one.elements if n.removeprefix(f"{instance.name}.") in names)
+                found.append(replace(one, name=f"{instance.name}.{number}", elements=elements))
+        return found
 
     def _evidence(self, instance: Instance, told: PinDirective | None, inner: Sequence[Amplifier]) -> Evidence | None:
         written = _written(instance)
@@ -168,7 +196,8 @@ class _Search:
         nodes = dict(instance.pins)
         return self.levels.tied(nodes[named["out"]], nodes[named["in-"]])
 
-    def _amplifier(self, instance: Instance, evidence: Evidence) -> Amplifier:
+    def _amplifier(self, instance: Instance, evidence: Evidence, loose: Sequence[str] | None = None) -> Amplifier:
+        """The amplifier that the evidence speaks of. loose: pins that nothing holds, None where the roles tell them."""
         roles = evidence.roles
         nodes = {**dict(instance.pins), GROUND: GROUND}
         signal = [roles[role] for role in SIGNAL]
@@ -181,10 +210,12 @@ class _Search:
         if devices:
             reason = f"no linear model is known for `{devices[0].name}` in `{instance.subckt}` ({devices[0].reason})"
             loop = OpenLoop({}, None, exact=False, reason=reason)
+            kind = self._kind_in_principle(instance, signal)
         else:
-            loop = self._open_loop(instance, signal)
-            if self.structure.nonlinear(instance):
-                loop = fitted(measured(loop))
+            all_roles = {**roles, **power}
+            free = self.structure.loose(instance, all_roles) if loose is None else tuple(loose)
+            loop = self._open_loop(instance, all_roles, free)
+            loop, kind = self._judged(loop, self.structure.nonlinear(instance))
         first = next((e for e in members if isinstance(e, Controlled)), None) or next(
             (e for e in members if isinstance(e, Device)), members[0]
         )
@@ -194,11 +225,29 @@ class _Search:
             positive_supply=nodes.get(power.get("v+", "")), negative_supply=nodes.get(power.get("v-", "")),
             evidence=evidence.words, elements=tuple(e.name for e in members),
             gain_element=f"{instance.name}.{evidence.gain_element}" if evidence.gain_element else first.name,
-            open_loop=loop, place=instance.origin.card.place(),
+            open_loop=loop, place=instance.origin.card.place(), kind=kind,
         )  # fmt: skip
 
-    def _open_loop(self, instance: Instance, signal: Sequence[str]) -> OpenLoop:
-        loose = self.structure.loose(instance, dict(zip(SIGNAL, signal, strict=True)))
+    def _judged(self, loop: OpenLoop, nonlinear: bool) -> tuple[OpenLoop, str]:
+        """The values of a model as they are told, and its kind; worked out once for all amplifiers that share it."""
+        key = id(loop.model)
+        if loop.model is None or key not in self.kinds:
+            self.kinds[key] = (fitted(measured(loop)) if nonlinear else loop, kind_of(loop))
+        told, kind = self.kinds[key]
+        return replace(told, exact=loop.exact, reason=loop.reason), kind
+
+    def _kind_in_principle(self, instance: Instance, signal: Sequence[str]) -> str:
+        """The kind of a model by nominal values in place of its devices."""
+        linear = self.structure.nominal_elements(instance)
+        plus, minus, output = signal
+        held = [p for p, _ in instance.pins if p != output]
+        try:
+            return kind_of(open_loop(LinearModel(bench(linear, held), plus, minus, output)))
+        except (np.linalg.LinAlgError, KeyError):
+            return "voltage-feedback"
+
+    def _open_loop(self, instance: Instance, roles: Mapping[Role, str], loose: tuple[str, ...]) -> OpenLoop:
+        signal = [roles[role] for role in SIGNAL]
         key = (id(instance.local), tuple(signal), loose)
         pins = [p for p, _ in instance.pins if p not in loose]
         if key not in self.loops:
@@ -211,6 +260,9 @@ class _Search:
                 self.loops[key] = OpenLoop({}, None, exact=False, reason=reason)
         loop = self.loops[key]
         nodes = dict(instance.pins)
+        tied_outside = [p for p in loose if not self.structure.alone(instance.name, nodes[p])]
+        if tied_outside and loop.exact:
+            return replace(loop, exact=False, reason=f"what hangs on its pin `{tied_outside[0]}` is left out")
         soft = [p for p in pins if p not in signal and nodes[p] not in self.held.still]
         if soft and loop.exact:
             tied, moving = other_pins(instance.local, pins, signal[:2], signal[2])

@@ -182,6 +182,16 @@ class LinearModel:
         """The response at DC, shape (1,)."""
         return self._reduced(self.bench.solve_dc(self.stimuli)[None])
 
+    def into_pins(self) -> dict[tuple[str, str], float]:
+        """Siemens at DC: the current into an input ('plus', 'minus') by the voltage at one, the other held."""
+        solution = self.bench.solve_dc(self.stimuli)
+        names = [(side, pin) for side, pin in (("plus", self.plus), ("minus", self.minus)) if pin != GROUND]
+        return {
+            (a, b): -float(solution[self.bench.branch_of_pin[pin], k].real)
+            for a, pin in names
+            for k, (b, _) in enumerate(names)
+        }
+
     def _reduced(self, solution: Complex) -> AmplifierResponse:
         """The response from the solutions for the three stimuli, shape (F, rows, stimuli)."""
         o = self.bench.index[self.output]

@@ -15,11 +15,13 @@ NAMES: tuple[tuple[Role, re.Pattern[str]], ...] = (
     ("in-", re.compile(r"in-|-in|inn|inm|im|in|in_?(n|m|neg|minus)|vin-|vinn|vinm|vim|inv(erting)?|minus|n|m|-")),
     ("out", re.compile(r"out(put)?|vo(ut)?|o")),
     ("v+", re.compile(r"v\+|\+v|[av]*vcc\+?|[av]*vdd|vp|vpp|vpos|v_?plus|vs\+|\+vs|vc|v_?cc|pos|supply\+")),
-    ("v-", re.compile(r"v-|-v|vee|vcc-|[av]*vss|vn|vnn|vneg|v_?minus|vs-|-vs|ve|v_?ee|neg|gnd|supply-")),
+    ("v-", re.compile(r"v-|-v|vee|vcc-|[av]*vss|vn|vnn|vm|vneg|v_?minus|vs-|-vs|ve|v_?ee|neg|gnd|supply-")),
 )
 """Pin names met in the field, whole words, lower case (common practice)."""
 
-OTHERS = re.compile(r"nc\d*|n\.c\.|null\d*|off\w*|os\d*|bal\w*|comp\d*|en\w*|sd\w*|shdn\w*|i?bias|iset|tab|pad|sub|com")
+OTHERS = re.compile(
+    r"nc\d*|n\.c\.|null\d*|off\w*|os\d*|bal\w*|comp\d*|en\w*|sd\w*|shdn\w*|i?bias|iset|i_?abc|tab|pad|sub|com"
+)
 """Names of pins that op-amps have beside those: not connected, offset, compensation, enable (common practice)."""
 
 WORDS: tuple[tuple[Role, re.Pattern[str]], ...] = (
@@ -80,6 +82,7 @@ def roles_by_comment(pins: Sequence[str], comments: Sequence[Comment]) -> dict[R
     told = [_by_bars([c.text.lower() for c in comments], pins)]
     told += [_roles_of(items, pins) for items in _one_line(texts, len(pins))]
     told.append(_by_pin(texts, pins))
+    told += [_by_pairs(text, pins) for text in texts]
     told += [_roles_of(items, pins) for items in _in_order(texts, len(pins))]
     return next((roles for roles in told if set(SIGNAL) <= roles.keys()), {})
 
@@ -141,6 +144,14 @@ def _by_pin(texts: Sequence[str], pins: Sequence[str]) -> dict[Role, str]:
             if role is not None and roles.setdefault(role, told.group(1)) != told.group(1):
                 return {}
     return roles
+
+
+def _by_pairs(text: str, pins: Sequence[str]) -> dict[Role, str]:
+    """Roles from one line of pairs, `1 null 2 in- 3 in+ ...`, that names every pin."""
+    words = re.split(r"[\s,;=:]+", text.strip())
+    if len(words) != 2 * len(pins) or set(words[0::2]) != set(pins):
+        return {}
+    return _roles_of(words[1::2], words[0::2])
 
 
 def _role_of(item: str) -> Role | None:

@@ -1,9 +1,9 @@
 """What the elements of an instance do at its pins: at the operating point, or in principle where that says nothing."""
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from functools import cached_property
 
-from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Instance
+from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance
 from xcheck.linearisation import nominal
 from xcheck.stages.macromodel import SignalPins, signal_pins
 from xcheck.stages.pins import POWER, SIGNAL, Role
@@ -17,8 +17,9 @@ FEWEST_WITH_OTHERS = 6
 class Structure:
     """Judges instances, those with the same elements and the same open pins once."""
 
-    def __init__(self, circuit: Circuit, written: Circuit) -> None:
-        """written: the circuit before it was linearised."""
+    def __init__(self, circuit: Circuit, written: Circuit, still: Collection[str]) -> None:
+        """written: the circuit before it was linearised; still: nodes that do not move at AC."""
+        self.still = still
         self.circuit = circuit
         self.written = {i.name: i for i in written.instances}
         self.found: dict[tuple[object, ...], list[SignalPins]] = {}
@@ -43,18 +44,29 @@ class Structure:
             self.found[key] = signal_pins(linear, [pin for pin, _ in instance.pins], least, loose)
         return self.found[key]
 
+    def nominal_elements(self, instance: Instance) -> list[Element]:
+        """An instance's elements with nominal values in place of devices, what has none left out."""
+        written = self.written.get(instance.name, instance)
+        return [e for e in nominal(written.local, {}) if not isinstance(e, Device)]
+
     def nonlinear(self, instance: Instance) -> bool:
         """Whether an instance holds devices, be they linear ones by now."""
         return any(isinstance(e, Device) for e in self.written.get(instance.name, instance).local)
 
     def loose(self, instance: Instance, named: Mapping[Role, str]) -> tuple[str, ...]:
-        """Pins on nodes that nothing else touches, other than signals and supplies: they are not held by anything."""
+        """Pins other than signals and supplies that nothing holds: those on nodes that nothing else touches, and, where
+        all signals and supplies are told, those on any node that moves (offset, compensation)."""
         if len(instance.pins) < FEWEST_WITH_OTHERS:
             return ()
         told = {named[role] for role in (*SIGNAL, *POWER) if role in named}
-        return tuple(pin for pin, node in instance.pins if pin not in told and self._alone(instance.name, node))
+        all_told = len(told) == len((*SIGNAL, *POWER))
+        return tuple(
+            pin for pin, node in instance.pins
+            if pin not in told and (self.alone(instance.name, node) or (all_told and node not in self.still))
+        )  # fmt: skip
 
-    def _alone(self, name: str, node: str) -> bool:
+    def alone(self, name: str, node: str) -> bool:
+        """Whether nothing outside an instance touches a node."""
         return node != GROUND and all(name in path for path in self._paths.get(node, ()))
 
     @cached_property

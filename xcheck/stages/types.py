@@ -71,7 +71,8 @@ class Amplifier:
 
     subckt: the name of its subcircuit, '' for a bare source; elements: flat names of its own elements;
     gain_element: the controlled source whose return ratio stands for the amplifier; place: its instance
-    card, or its E source's; part: the data sheet that holds for it.
+    card, or its E source's; part: the data sheet that holds for it; kind:
+    'voltage-feedback', 'current-feedback', 'transconductance' or 'comparator'.
     """
 
     name: str
@@ -87,6 +88,7 @@ class Amplifier:
     open_loop: OpenLoop
     place: Place
     part: Part | None = None
+    kind: str = "voltage-feedback"
 
 
 @dataclass(frozen=True, slots=True)

@@ -16,6 +16,7 @@ from xcheck.topologies import (
     summing,
     transimpedance,
     voltage_follower,
+    voltage_to_current,
 )  # fmt: skip
 from xcheck.topologies.drawing import Draughtsman
 from xcheck.topologies.sketch import Sketch, sketch
@@ -23,6 +24,7 @@ from xcheck.topologies.topology import Topology
 from xcheck.topologies.types import Recognised
 
 TOPOLOGIES: tuple[Topology, ...] = (
+    voltage_to_current.TOPOLOGY,
     schmitt_trigger.TOPOLOGY,
     comparator.TOPOLOGY,
     transimpedance.TOPOLOGY,

@@ -23,7 +23,8 @@ class Sketch:
     """Places of a stage. Signal and reference nodes that reach the inverting (n) and non-inverting (p) input, each
     with the branch between; feedback: what lies between output and inverting input; shorted: the output is the
     inverting input; positive: what lies between output and non-inverting input; ground_n, ground_p: to ground.
-    current_n: the inverting input is driven by a current; direct_p: the non-inverting input is itself an input.
+    current_n: the inverting input is driven by a current; direct_p: the non-inverting input is itself an input;
+    transconductance: the amplifier's output is a current.
     why_not: why the stage could not be drawn or named, '' where nothing speaks against it."""
 
     signal_n: dict[str, Branch] = field(default_factory=dict)
@@ -37,6 +38,7 @@ class Sketch:
     ground_p: Branch | None = None
     current_n: bool = False
     direct_p: bool = False
+    transconductance: bool = False
     why_not: str = ""
 
     @property
@@ -82,19 +84,20 @@ def sketch(draughtsman: Draughtsman, stage: Stage, band: tuple[float, float]) ->
     if isinstance(drawing, str):
         devices = draughtsman.devices(stage)
         rest = draughtsman.draw(stage, middle, devices) if devices else drawing
-        drawn = _sketch(draughtsman, rest)
+        drawn = _sketch(draughtsman, rest, stage)
         return drawn if drawn.closed and not drawn.why_not else Sketch(why_not=drawing)
-    return _sketch(draughtsman, drawing)
+    return _sketch(draughtsman, drawing, stage)
 
 
-def _sketch(draughtsman: Draughtsman, drawing: Drawing | str) -> Sketch:
+def _sketch(draughtsman: Draughtsman, drawing: Drawing | str, stage: Stage) -> Sketch:
     if isinstance(drawing, str):
         return Sketch(why_not=drawing)
     n, p, o = drawing.inverting, drawing.non_inverting, drawing.output
     if n == p:
         return Sketch(why_not="both inputs are on one node")
     links = drawing.network.reduced({n, p, o, GROUND, *drawing.inputs})
-    return _places(links, drawing, draughtsman.partition.circuit)
+    drawn = _places(links, drawing, draughtsman.partition.circuit)
+    return replace(drawn, transconductance=stage.amplifiers[0].kind == "transconductance")
 
 
 def _places(links: Links, drawing: Drawing, circuit: Circuit) -> Sketch:
