@@ -77,7 +77,9 @@ def _decks_of(paths: list[str | Path]) -> list[Path]:
 
 def _engine(options: Options) -> EngineInfo:
     if options.results is not None:
-        return EngineInfo(available=False, reason=f"simulated values are taken from {options.results}")
+        if options.engine == "ngspice":
+            raise CallError("--results takes the simulated values from a file: leave --engine ngspice away")
+        return EngineInfo(available=False, reason=f"simulated values from {options.results}")
     if options.engine == "none":
         return EngineInfo(available=False, reason="not asked for (engine none)")
     engine = find_engine()
@@ -107,7 +109,9 @@ def analyse(
     """All that can be known of one deck, and what the rules say of it, in order of place."""
     project = project or Project()
     circuit = elaborate(deck, options.subckt)
-    operated = _operated(deck, circuit, engine)
+    # with results at hand ngspice, where it is, still says at which operating point the deck is linear
+    asks = find_engine() if options.results is not None and options.engine == "auto" else engine
+    operated = _operated(deck, circuit, asks)
     linear = linearise(circuit, operated.point) if operated.point is not None else Linearised(circuit)
     declared, refusals = band_of(deck.directives)
     band = options.band or declared or project.band
@@ -129,7 +133,9 @@ def analyse(
     forms = closed_forms(partition, frequency, band=in_band)
     simulation = None
     if formed is not None:
-        simulation = Simulation(engine, formed.values, formed.not_formed)
+        simulation = Simulation(
+            engine, formed.values, formed.not_formed, taken_from=str(options.results), doubts=formed.doubts
+        )
     elif options.ports_measured and engine.available and any(stage.ports for stage in partition.stages):
 
         def tell(done: int, total: int) -> None:
@@ -146,6 +152,7 @@ def analyse(
         {} if simulation is None else simulation.values,
         {} if simulation is None else simulation.unmeasured,
         tolerance=tolerance,
+        stood_in=_stood_in(partition),
         data_sheet=_by_data_sheet(partition, options, frequency, in_band),
     )
     evidence = Evidence(
@@ -188,6 +195,17 @@ def _with_models(
         elif wanted:
             chosen[a.name] = stated(None, a.open_loop.values, wanted)
     return with_stand_ins(circuit, amplifiers, chosen) if chosen else (circuit, tuple(amplifiers))
+
+
+def _stood_in(partition: Partition) -> frozenset[str]:
+    """Stages with an amplifier whose values are not its own model's nor the project's: no simulation of the deck can be
+    held against them."""
+    doubtful = ("data sheet", "assumed")
+    return frozenset(
+        stage.name
+        for stage in partition.stages
+        if any(q.origin in doubtful and q.value for a in stage.amplifiers for q in a.open_loop.values.values())
+    )
 
 
 def _by_data_sheet(

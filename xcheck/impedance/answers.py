@@ -1,6 +1,6 @@
 """One answer a port from the four methods: difference, verdict, and how far the rule of thumb reaches."""
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 
 import numpy as np
 
@@ -39,9 +39,11 @@ def answer_ports(
     *,
     tolerance: float,
     data_sheet: Mapping[str, Complex] | None = None,
+    stood_in: Collection[str] = (),
 ) -> tuple[PortAnswer, ...]:
     """Answers of all ports in stage and port order. topologies: by stage name; simulated and unmeasured: ohm, shape
-    (F,), and reasons by port subject; data_sheet: ohm, shape (F,), by port subject."""
+    (F,), and reasons by port subject; data_sheet: ohm, shape (F,), by port subject; stood_in: stages whose amplifiers
+    have not their own model's values, so that nothing simulated can be held against them."""
     answers = []
     for stage in partition.stages:
         for port in stage.ports:
@@ -49,6 +51,9 @@ def answer_ports(
             road = roads.get(subject, "no return ratio")
             form = forms.by_subject.get(subject, "no closed form")
             measured = simulated.get(subject)
+            if stage.name in stood_in and measured is not None:
+                unmeasured = {**unmeasured, subject: "the amplifier's values are a data sheet's or assumed"}
+                measured = None
             answers.append(
                 _answer(
                     port, topologies.get(stage.name, "unclassified"), frequency, road, form, measured,

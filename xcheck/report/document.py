@@ -57,6 +57,7 @@ def _deck(review: DeckReview) -> dict[str, Any]:
     found["references"] = list(evidence.partition.references)
     found["band_hz"] = list(evidence.band)
     found["band_declared"] = evidence.band_declared
+    found["simulated_from"] = evidence.simulation.taken_from if evidence.simulation is not None else ""
     if evidence.simulation is not None:
         found["simulation"] = {
             "failure": evidence.simulation.failure, "failed_step": evidence.simulation.failed_step,

@@ -165,6 +165,8 @@ def _finding(console: Console, finding: Finding) -> None:
 def _closing(console: Console, outcome: Outcome) -> None:
     summary, engine = outcome.summary, outcome.engine
     version = f"ngspice {engine.version}" if engine.available else f"not simulated: {engine.reason}"
+    if outcome.options.results is not None:
+        version = engine.reason
     console.print(
         f"{summary.decks} deck(s), {summary.stages} stage(s): {summary.errors} error(s), "
         f"{summary.warnings} warning(s), {summary.notes} note(s); {version}"

@@ -38,6 +38,11 @@ def impedance_disagrees(evidence: Evidence) -> Iterator[Finding]:
         advice = "linear model and deck part here; look at the operating point and the amplifier's model"
         if at_rail:
             advice = f"the output of {at_rail[0]} is at its rail at the operating point: mend that first"
+        doubts = evidence.simulation.doubts if evidence.simulation is not None else ()
+        cause = "output-at-rail" if at_rail else "unknown"
+        if doubts and evidence.simulation is not None and not at_rail:
+            cause = "result-from-another-deck"
+            advice = f"{evidence.simulation.taken_from} seems to be of another deck: {'; '.join(doubts)}"
         method = "return ratio" if answer.return_ratio is not None else "closed form"
         yield Finding(
             "impedance-disagrees",
@@ -47,7 +52,7 @@ def impedance_disagrees(evidence: Evidence) -> Iterator[Finding]:
             f"{_value(answer.analytic, worst)} by {method}, at {_hertz(answer, worst)}: "
             f"they differ by {percent(float(gap[worst]))}, tolerance {percent(tolerance)}",
             subject=answer.port.subject,
-            cause="output-at-rail" if at_rail else "unknown",
+            cause=cause,
             advice=advice,
         )
 

@@ -27,7 +27,8 @@ class Simulation:
     subject; operating_point: volt by flat node; currents: ampere by flat name of a voltage source, into its
     first node; failure: what failed as a whole, in ngspice's own words, '' where nothing did; failed_step:
     'load', 'operating point', 'ac', 'time limit', 'memory limit', 'crash' or ''; messages: ngspice's
-    warnings and notes; left_out: cards that were not handed to ngspice, in words.
+    warnings and notes; left_out: cards that were not handed to ngspice, in words; taken_from: the result file that
+    the values come from, '' where ngspice was run; doubts: what speaks for another deck behind that file.
     """
 
     engine: EngineInfo
@@ -39,3 +40,5 @@ class Simulation:
     failed_step: str = ""
     messages: tuple[str, ...] = ()
     left_out: tuple[str, ...] = ()
+    taken_from: str = ""
+    doubts: tuple[str, ...] = ()
