@@ -27,6 +27,8 @@ FITS = {
 }  # fmt: skip
 COLUMNS = (("data sheet", 20), ("model", 20), ("measured", 20))
 NAME = 33
+ROUNDING = 1e-9
+"""A fit nearer than this is exact but for rounding."""
 
 
 def amplifiers(evidence: Evidence) -> str:
@@ -56,7 +58,7 @@ def _amplifier(amplifier: Amplifier) -> Sequence[str]:
             row = "".join(f"{cell:<{width}}" for cell, (_, width) in zip(cells, COLUMNS, strict=True))
             lines.append(f"  {words:<{NAME}}{row}".rstrip())
     fits = [
-        f"{words} within {percent(value)}"
+        f"{words} within {percent(value if value > ROUNDING else 0.0)}"
         for key, words in FITS.items()
         if (quantity := values.get(key)) is not None and isinstance(value := quantity.value, float)
     ]
