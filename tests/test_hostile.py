@@ -134,6 +134,23 @@ def huge_numbers(folder: Path) -> None:
     )
 
 
+def endless_polynomial(folder: Path) -> None:
+    terms = " ".join(["1"] * 3000)
+    (folder / "deck.cir").write_text(f"poly\ne1 a 0 poly(1) b 0 {terms}\nr1 a 0 1k\nv1 b 0 1 ac 1\n.end\n")
+
+
+def endless_sum(folder: Path) -> None:
+    terms = "+".join(["v(b)*v(b)"] * 3000)
+    (folder / "deck.cir").write_text(f"sum\nb1 a 0 v={terms}\nr1 a 0 1k\nv1 b 0 1 ac 1\n.end\n")
+
+
+def devices_with_commands_for_names(folder: Path) -> None:
+    names = "\n".join(
+        f"{name} a 0 dd" for name in ("d`touch$IFSpwned`", "d$(touch$IFSpwned)", "d;touch$IFSpwned", "d|sh")
+    )
+    (folder / "deck.cir").write_text(f"names\n.model dd d is=1e-14\n{names}\nr1 a b 1k\nv1 b 0 1 ac 1\n.end\n")
+
+
 def missing(folder: Path) -> None:
     assert not (folder / "deck.cir").exists()
 
@@ -142,7 +159,7 @@ CASES: list[Callable[[Path], None]] = [
     include_itself, include_each_other, nested_includes, recursive_subcircuit, exponential_subcircuits,
     recursive_parameters, deep_parentheses, long_line, million_lines, million_continuations, zero_bytes,
     utf_16, utf_16_without_mark, pipe_as_include, device_as_include, link_to_a_device, pipe_as_deck,
-    folder_as_include, singular_circuit, empty, huge_numbers, missing,
+    folder_as_include, endless_polynomial, endless_sum, devices_with_commands_for_names, singular_circuit, empty, huge_numbers, missing,
 ]  # fmt: skip
 
 

@@ -110,7 +110,8 @@ def _poly(card: Card, kind: Kind, fields: tuple[Field, ...], dimension: str | No
         numbers = [v for v in values if v is not None]
         if any(numbers[count + 1 :]):
             inputs = [_probe(controls[width * k : width * (k + 1)], context) for k in range(count)]
-            behaviour = Behaviour("v" if kind in "eh" else "i", polynomial(numbers, inputs))
+            tree = polynomial(numbers, inputs)
+            behaviour = Behaviour("v" if kind in "eh" else "i", tree) if tree is not None else None
             return Device(name, kind, ends, sensing, "", "polynomial of higher degree", origin, behaviour)
         gains = numbers[1 : count + 1]
         terms = [_term(gain, controls[width * k : width * (k + 1)], context) for k, gain in enumerate(gains) if gain]

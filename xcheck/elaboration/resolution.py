@@ -2,7 +2,7 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from itertools import combinations_with_replacement
+from itertools import combinations_with_replacement, islice
 
 from xcheck.circuit.trees import Binary, Call, Choice, Constant, Name, Node, Unary
 from xcheck.elaboration.context import Context
@@ -80,14 +80,18 @@ class _Resolution:
         return self.node(function.body, dict(zip(function.parameters, given, strict=True)))
 
 
-def polynomial(coefficients: Sequence[float], inputs: Sequence[Node]) -> Node:
+def polynomial(coefficients: Sequence[float], inputs: Sequence[Node]) -> Node | None:
     """A POLY source's tree: the constant, then each product of inputs in the order of SPICE, by rising degree
-    (x, y, xx, xy, yy, xxx, ...)."""
+    (x, y, xx, xy, yy, xxx, ...). None where it would be larger than any model's."""
     products: list[tuple[int, ...]] = [()]
-    degree = 0
+    degree = size = 0
     while len(products) < len(coefficients):
         degree += 1
-        products += combinations_with_replacement(range(len(inputs)), degree)
+        fresh = list(islice(combinations_with_replacement(range(len(inputs)), degree), len(coefficients)))
+        products += fresh
+        size += degree * len(fresh)
+        if size > LARGEST_TREE:
+            return None
     total: Node = Constant(coefficients[0] if coefficients else 0.0)
     for value, product in zip(coefficients[1:], products[1:], strict=False):
         if value:

@@ -85,8 +85,10 @@ def slope_of(tree: Node, probed: Callable[[Probe], float], *, all_branches: bool
     all_branches: where one of several branches would be taken, the mean of them all. Raises NoSlope."""
     try:
         found = _Slopes(probed, all_branches).of(tree)
-    except (ValueError, OverflowError, ZeroDivisionError) as error:
+    except (ValueError, OverflowError, ZeroDivisionError, TypeError) as error:
         raise NoSlope(f"it has no value at the operating point ({error})") from error
+    except RecursionError:
+        raise NoSlope("its expression is nested too deep") from None
     except KeyError as missing:
         raise NoSlope(f"nothing is known of {missing.args[0]} at the operating point") from None
     if not all(map(math.isfinite, (found.value, *found.by.values()))):

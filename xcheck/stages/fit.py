@@ -12,7 +12,7 @@ import numpy as np
 from xcheck.circuit.arrays import Complex, Real
 from xcheck.stages.types import OpenLoop, Quantity
 
-GRID = np.logspace(-3, 10, 521)
+GRID = np.logspace(-3, 10, 261)
 """Hz, on which corners are looked for; between its points the response is nearly a straight line in logarithms."""
 LOWEST = 1.0
 
