@@ -159,7 +159,8 @@ CASES: list[Callable[[Path], None]] = [
     include_itself, include_each_other, nested_includes, recursive_subcircuit, exponential_subcircuits,
     recursive_parameters, deep_parentheses, long_line, million_lines, million_continuations, zero_bytes,
     utf_16, utf_16_without_mark, pipe_as_include, device_as_include, link_to_a_device, pipe_as_deck,
-    folder_as_include, endless_polynomial, endless_sum, devices_with_commands_for_names, singular_circuit, empty, huge_numbers, missing,
+    folder_as_include, endless_polynomial, endless_sum, devices_with_commands_for_names,
+    singular_circuit, empty, huge_numbers, missing,
 ]  # fmt: skip
 
 

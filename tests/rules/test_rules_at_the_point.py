@@ -4,6 +4,7 @@ from pathlib import Path
 
 import pytest
 
+from tests.stages.macromodels import definition
 from xcheck.deck.reader import read_text
 from xcheck.options import Options
 from xcheck.parts.catalogue import find
@@ -33,6 +34,25 @@ def said(rule: str, name: str, cards: str) -> list[tuple[str, int]]:
 
 
 FOLLOWER = "vin in 0 {volt} ac 1\nxu1 in out vp vn out {name}\nrl out 0 10k\n"
+RAIL = "output-at-rail"
+PINS = dict(zip(("p", "n", "vp", "vn", "o"), "12345", strict=True))
+CLIPPED = definition("bipolar", "* in+ in- v+ v- out\n.subckt railed 1 2 3 4 5", PINS, "railed")
+
+
+@pytest.mark.engine
+@pytest.mark.parametrize(("volt", "lines"), [(1.0, ["xu1"]), (-1.0, ["xu1"]), (0.0, [])])
+def test_a_model_that_clips_before_its_supply_is_at_its_rail(volt: float, lines: list[str]) -> None:
+    stage = f"vin in 0 {volt} ac 1\nr1 in m 1k\nr2 m out 100k\nxu1 0 m vp vn out railed\nrl out 0 10k\n"
+    assert [card for card, _ in said(RAIL, "gauge7", CLIPPED + DUAL + stage)] == lines
+
+
+@pytest.mark.engine
+def test_a_comparator_belongs_at_its_rail() -> None:
+    stage = "vin in 0 1 ac 1\nxu1 in 0 vp vn out lm393\nrl out 0 10k\n"
+    assert said(RAIL, "lm393", DUAL + stage) == []
+    assert said("feedback-missing", "lm393", DUAL + stage) == [("xu1", 1)], "as a note"
+
+
 RANGE = "input-outside-common-mode"
 
 

@@ -6,68 +6,68 @@ with a capacitor by Miller; railed: a linear op-amp with diodes to the supplies.
 """
 
 BODIES = {
-    "bipolar": """c1 11 12 8.66e-12
-c2 6 7 30e-12
-dc {o} 53 dy
-de 54 {o} dy
-dlp 90 91 dx
-dln 92 90 dx
+    "bipolar": """c1 i11 i12 8.66e-12
+c2 i6 i7 30e-12
+dc {o} i53 dy
+de i54 {o} dy
+dlp i90 i91 dx
+dln i92 i90 dx
 dp {vn} {vp} dx
-egnd 99 0 poly(2) ({vp},0) ({vn},0) 0 .5 .5
-fb 7 99 poly(5) vb vc ve vlp vln 0 10.61e6 -10e6 10e6 10e6 -10e6
-ga 6 0 11 12 188.5e-6
-gcm 0 6 10 99 5.961e-9
-iee 10 {vn} dc 15.16e-6
-hlim 90 0 vlim 1k
-q1 11 {n} 13 qx
-q2 12 {p} 14 qx
-r2 6 9 100e3
-rc1 {vp} 11 5.305e3
-rc2 {vp} 12 5.305e3
-re1 13 10 1.836e3
-re2 14 10 1.836e3
-ree 10 99 13.19e6
-ro1 8 {o} 50
-ro2 7 99 25
+egnd i99 0 poly(2) ({vp},0) ({vn},0) 0 .5 .5
+fb i7 i99 poly(5) vb vc ve vlp vln 0 10.61e6 -10e6 10e6 10e6 -10e6
+ga i6 0 i11 i12 188.5e-6
+gcm 0 i6 i10 i99 5.961e-9
+iee i10 {vn} dc 15.16e-6
+hlim i90 0 vlim 1k
+q1 i11 {n} i13 qx
+q2 i12 {p} i14 qx
+r2 i6 i9 100e3
+rc1 {vp} i11 5.305e3
+rc2 {vp} i12 5.305e3
+re1 i13 i10 1.836e3
+re2 i14 i10 1.836e3
+ree i10 i99 13.19e6
+ro1 i8 {o} 50
+ro2 i7 i99 25
 rp {vp} {vn} 18.16e3
-vb 9 0 dc 0
-vc {vp} 53 dc 1
-ve 54 {vn} dc 1
-vlim 7 8 dc 0
-vlp 91 0 dc 40
-vln 0 92 dc 40
+vb i9 0 dc 0
+vc {vp} i53 dc 1
+ve i54 {vn} dc 1
+vlim i7 i8 dc 0
+vlp i91 0 dc 40
+vln 0 i92 dc 40
 .model dx d(is=800e-18 rs=1)
 .model dy d(is=800e-18 rs=1m cjo=10p)
 .model qx npn(is=800e-18 bf=93.75)
 """,
-    "jfet": """c1 11 12 3.5e-12
-c2 6 7 15e-12
-dc {o} 53 dx
-de 54 {o} dx
-dlp 90 91 dx
-dln 92 90 dx
+    "jfet": """c1 i11 i12 3.5e-12
+c2 i6 i7 15e-12
+dc {o} i53 dx
+de i54 {o} dx
+dlp i90 i91 dx
+dln i92 i90 dx
 dp {vn} {vp} dx
-egnd 99 0 poly(2) ({vp},0) ({vn},0) 0 .5 .5
-fb 7 99 poly(5) vb vc ve vlp vln 0 4.715e6 -5e6 5e6 5e6 -5e6
-ga 6 0 11 12 282.8e-6
-gcm 0 6 10 99 8.942e-9
-iss {vp} 10 dc 195e-6
-hlim 90 0 vlim 1k
-j1 11 {n} 10 jx
-j2 12 {p} 10 jx
-r2 6 9 100e3
-rd1 {vn} 11 3.536e3
-rd2 {vn} 12 3.536e3
-ro1 8 {o} 50
-ro2 7 99 50
+egnd i99 0 poly(2) ({vp},0) ({vn},0) 0 .5 .5
+fb i7 i99 poly(5) vb vc ve vlp vln 0 4.715e6 -5e6 5e6 5e6 -5e6
+ga i6 0 i11 i12 282.8e-6
+gcm 0 i6 i10 i99 8.942e-9
+iss {vp} i10 dc 195e-6
+hlim i90 0 vlim 1k
+j1 i11 {n} i10 jx
+j2 i12 {p} i10 jx
+r2 i6 i9 100e3
+rd1 {vn} i11 3.536e3
+rd2 {vn} i12 3.536e3
+ro1 i8 {o} 50
+ro2 i7 i99 50
 rp {vp} {vn} 2.143e3
-rss 10 99 1.026e6
-vb 9 0 dc 0
-vc {vp} 53 dc 2.2
-ve 54 {vn} dc 2.2
-vlim 7 8 dc 0
-vlp 91 0 dc 25
-vln 0 92 dc 25
+rss i10 i99 1.026e6
+vb i9 0 dc 0
+vc {vp} i53 dc 2.2
+ve i54 {vn} dc 2.2
+vlim i7 i8 dc 0
+vlp i91 0 dc 25
+vln 0 i92 dc 25
 .model dx d(is=800e-18)
 .model jx pjf(is=15e-15 beta=270.1e-6 vto=-1 cgs=3p cgd=2p)
 """,
@@ -85,11 +85,11 @@ iq {vp} {vn} 1m
 m2 d2 {p} t t mp w=200u l=2u
 m3 d1 d1 {vn} {vn} mn w=50u l=4u
 m4 d2 d1 {vn} {vn} mn w=50u l=4u
-m5 t b {vp} {vp} mp w=50u l=2u
-m6 b b {vp} {vp} mp w=50u l=2u
-ib b {vn} 20u
+m5 t bb {vp} {vp} mp w=50u l=2u
+m6 bb bb {vp} {vp} mp w=50u l=2u
+ib bb {vn} 20u
 m7 {o} d2 {vn} {vn} mn w=200u l=4u
-m8 {o} b {vp} {vp} mp w=100u l=2u
+m8 {o} bb {vp} {vp} mp w=100u l=2u
 cc d2 z 10p
 rz z {o} 2k
 .model mn nmos level=1 vto=0.7 kp=1e-4 lambda=0.02 gamma=0.4 tox=2e-8 cgso=2e-10 cgdo=2e-10

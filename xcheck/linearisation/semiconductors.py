@@ -126,7 +126,8 @@ def bipolar(parts: Parts) -> None:
     well = b if lateral or parts.model("subs") < 0 else c
     substrate = rest[0] if rest else GROUND
     parts.capacitance("sub", well, substrate, parts.value("csub"))
-    parts.conductance("sub", well, substrate, parts.values.get("gdsub", 0.0))
+    if parts.model("iss"):  # without it ngspice reports 1 pS there that its equations do not have
+        parts.conductance("sub", well, substrate, parts.values.get("gdsub", 0.0))
 
 
 def _is_lateral(parts: Parts) -> bool:

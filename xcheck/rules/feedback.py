@@ -167,6 +167,8 @@ def _share(circles: Mapping[str, int], one: str, other: str) -> bool:
 
 def _why_meant(evidence: Evidence, amplifier: Amplifier) -> str:
     """Why an amplifier without negative feedback is taken for a switch, '' where it is not."""
+    if amplifier.kind == "comparator" and amplifier.part is not None:
+        return f"{amplifier.part.name} is a comparator ({amplifier.part.data_sheet})"
     for name in (amplifier.name.rpartition(".")[2], amplifier.subckt, amplifier.output.rpartition(".")[2]):
         if MEANT_NAME.search(name):
             return f"`{name}` says so"

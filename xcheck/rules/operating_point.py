@@ -15,6 +15,11 @@ MARGIN_OF_SPAN = 0.01
 """An output nearer to a supply than the lesser of the two is at it: rail-to-rail outputs of ordinary parts
 come within tens of millivolts under light load (common practice), and no output works there."""
 
+NEAR_OF_SPAN = 0.25
+COLLAPSED = 100.0
+"""A nonlinear model whose gain at the operating point is less, in the outer quarter of its span, is at its limit: the
+outputs of ordinary bipolar parts end one to three volts before the supplies (common practice)."""
+
 OPERATING_POINT = "operating point"
 
 SINGULAR = re.compile(r"singular matrix.*", re.IGNORECASE)
@@ -91,10 +96,10 @@ def not_simulated(evidence: Evidence) -> Iterator[Finding]:
 
 
 def output_at_rail(evidence: Evidence) -> Iterator[Finding]:
-    """An output at, near or (a linear model cannot clip) beyond one of its supplies."""
+    """An output at, near or (a linear model cannot clip) beyond one of its supplies. A comparator belongs there."""
     for amplifier in evidence.partition.amplifiers:
         seen = rail_of(evidence, amplifier)
-        if seen:
+        if seen and amplifier.kind != "comparator":
             yield Finding(
                 "output-at-rail",
                 "error",
@@ -124,7 +129,19 @@ def rail_of(evidence: Evidence, amplifier: Amplifier) -> str:
         if beyond > -margin:
             how = "beyond" if beyond > margin else "at"
             return f"{engineering(output, 'V')}, {how} its supply `{supply}` of {engineering(level, 'V')}"
+        fallen = _collapsed_gain(amplifier)
+        if fallen is not None and beyond > -NEAR_OF_SPAN * (high - low):
+            where = f"{engineering(output, 'V')}, near its supply `{supply}` of {engineering(level, 'V')}"
+            return f"{where}, where its gain has fallen to {engineering(fallen, '')}"
     return ""
+
+
+def _collapsed_gain(amplifier: Amplifier) -> float | None:
+    """The measured gain of a nonlinear model where it is next to none, None where it is sound or not measured."""
+    gain = amplifier.open_loop.values.get("gain")
+    if gain is None or gain.origin != "measured" or not isinstance(gain.value, float):
+        return None
+    return gain.value if gain.value < COLLAPSED else None
 
 
 def _named_in(evidence: Evidence, texts: tuple[str, ...]) -> tuple[Place, str]:

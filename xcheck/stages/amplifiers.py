@@ -7,6 +7,7 @@ import numpy as np
 
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance
 from xcheck.finding import Finding
+from xcheck.parts.catalogue import find
 from xcheck.project import Project
 from xcheck.stages.bare import bare_amplifiers
 from xcheck.stages.boosters import with_boosters
@@ -161,8 +162,15 @@ class _Search:
             return found, LINEAR
         if found is None or not _is_differential(found):
             found = self._fitting(instance, named, structure.in_principle(instance, named, LEAST_NOMINAL_GAIN))
-            return found if found is not None and _is_differential(found) else None, IN_PRINCIPLE
+            told = bool(named) or find(instance.subckt) is not None
+            sure = found is not None and _is_differential(found) and (told or self._has_a_loop(instance, found))
+            return found if sure else None, IN_PRINCIPLE
         return found, AT_THE_POINT
+
+    def _has_a_loop(self, instance: Instance, seen: SignalPins) -> bool:
+        """Whether the deck ties the output to an input: logic gates have pins like an op-amp's, but no such loop."""
+        nodes = dict(instance.pins)
+        return any(self.levels.tied(nodes[seen.output], nodes[pin]) for pin in (seen.plus, seen.minus))
 
     def _fitting(
         self, instance: Instance, named: Mapping[Role, str], judged: Sequence[SignalPins]
@@ -234,7 +242,8 @@ class _Search:
         if loop.model is None or key not in self.kinds:
             self.kinds[key] = (fitted(measured(loop)) if nonlinear else loop, kind_of(loop))
         told, kind = self.kinds[key]
-        return replace(told, exact=loop.exact, reason=loop.reason), kind
+        same = (told.exact, told.reason) == (loop.exact, loop.reason)
+        return told if same else replace(told, exact=loop.exact, reason=loop.reason), kind
 
     def _kind_in_principle(self, instance: Instance, signal: Sequence[str]) -> str:
         """The kind of a model by nominal values in place of its devices."""
