@@ -317,3 +317,37 @@ def test_a_board_written_as_one_subcircuit_is_searched_inside() -> None:
     many = "".join(f"r{k} s{k} n{k} 1k\nrf{k} n{k} s{k + 1} 1k\nxu{k} 0 n{k} vp vn s{k + 1} gaugeamp\n" for k in links)
     deck = OPAMP + SUPPLIES + f".subckt board s0 vp vn\n{many}.ends\nvin in 0 ac 1\nxboard in vp vn board\n"
     assert [a.name for a in amplifiers_of(deck)] == [f"xboard.xu{k}" for k in links]
+
+
+@pytest.mark.parametrize(
+    ("what", "header"),
+    [
+        ("a comment with its inputs exchanged", "* connections: in-, in+, v+, v-, out\n.subckt part 1 2 3 4 5"),
+        ("a comment with the output in another place", "* connections: in+, in-, out, v+, v-\n.subckt part 1 2 3 4 5"),
+        ("a comment below the card", ".subckt part 1 2 3 4 5\n* pins: output, in+, in-, v+, v-"),
+    ],
+)
+def test_evidence_that_does_not_agree_is_said(what: str, header: str) -> None:
+    part = f"{header}\ng1 0 a 1 2 1m\nra a 0 100meg\ne2 b 0 a 0 1\nro b 5 50\nrq 3 4 10k\n.ends\n"
+    amplifiers, findings = find_amplifiers(circuit_of(used(part)))
+    (amplifier,) = amplifiers
+    assert pins(amplifier) == ("0", "n", "out"), "what the elements do counts"
+    (finding,) = findings
+    assert (finding.rule, finding.level, finding.subject) == ("amplifier-pins-uncertain", "warning", "xu1"), what
+    assert "against comment" in finding.message
+    assert "* xcheck: amplifier part" in finding.advice
+
+
+@pytest.mark.parametrize(
+    "header",
+    [
+        "* connections: in+, in-, v+, v-, out\n.subckt part 1 2 3 4 5",
+        "* a level amplifier with five pins\n.subckt part 1 2 3 4 5",
+        "* in and out, up and down, and what else there is\n.subckt part 1 2 3 4 5",
+    ],
+)
+def test_evidence_that_agrees_or_says_nothing_is_let_be(header: str) -> None:
+    part = f"{header}\ng1 0 a 1 2 1m\nra a 0 100meg\ne2 b 0 a 0 1\nro b 5 50\nrq 3 4 10k\n.ends\n"
+    amplifiers, findings = find_amplifiers(circuit_of(used(part)))
+    assert pins(amplifiers[0]) == ("0", "n", "out")
+    assert findings == ()

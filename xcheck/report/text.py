@@ -135,6 +135,7 @@ def _formulas(console: Console, evidence: Evidence) -> None:
 def _remarks(console: Console, evidence: Evidence) -> None:
     if evidence.partition.references:
         console.print(f"  taken as still nodes for splitting: {', '.join(evidence.partition.references)}")
+    _stand_ins(console, evidence)
     reasons: dict[str, list[str]] = {}
     for answer in evidence.answers:
         if answer.verdict == "unchecked":
@@ -144,6 +145,30 @@ def _remarks(console: Console, evidence: Evidence) -> None:
     if not evidence.band_declared:
         low, high = (engineering(f, "Hz") for f in evidence.band)
         console.print(f"  no band declared (--band or `* xcheck: band LOW HIGH`): looked at {low} to {high}")
+
+
+STATED = {
+    "gain": "gain", "gain_bandwidth_hz": "gain-bandwidth", "input_resistance_ohm": "input resistance",
+    "output_resistance_ohm": "output resistance",
+}  # fmt: skip
+
+
+def _stand_ins(console: Console, evidence: Evidence) -> None:
+    """Amplifiers whose values are not their own model's, alike ones together, and where each value comes from."""
+    alike: dict[str, list[str]] = {}
+    for amplifier in evidence.partition.amplifiers:
+        values = amplifier.open_loop.values
+        sources: dict[str, list[str]] = {}
+        for name, words in STATED.items():
+            if name in values and values[name].origin in ("data sheet", "assumed", "project"):
+                sources.setdefault(values[name].origin, []).append(words)
+        sheet = amplifier.part.data_sheet if amplifier.part is not None else "data sheet"
+        named = {"data sheet": f"by the {sheet}", "project": "by the project file", "assumed": "assumed"}
+        told = "; ".join(f"{', '.join(words)} {named[origin]}" for origin, words in sources.items())
+        if told:
+            alike.setdefault(told, []).append(amplifier.name)
+    for told, names in alike.items():
+        console.print(f"  {_few(names)}: {told}")
 
 
 def _few(names: Iterable[str]) -> str:

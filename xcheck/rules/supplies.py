@@ -43,7 +43,8 @@ def _fed(evidence: Evidence) -> set[str]:
             if element.kind == "c":
                 continue
         elif isinstance(element, Device):
-            if element.kind == "x":  # nobody knows what is in it
+            # nobody knows what is in an undefined block; behavioural sources and code models drive what they are on
+            if element.kind in "xab" or element.behaviour is not None:
                 starts.update(nodes)
         elif not isinstance(element, Coupling):
             starts.update(nodes)

@@ -181,6 +181,8 @@ class _Search:
         outputs = [s for s in free if nodes[s.output] not in self.held.reasons]
         if not outputs:  # a board may have an output on a supply by mistake
             outputs = [s for s in free if s.output == named.get("out")]
+        if not outputs:  # or a comment may call an output a supply
+            outputs = [s for s in judged if nodes[s.output] not in self.held.reasons]
         if len(outputs) > 1:
             outputs = [s for s in outputs if s.output == named.get("out")]
         if len(outputs) != 1:
