@@ -175,7 +175,7 @@ def analyse(
 def _operated(deck: Deck, circuit: Circuit, engine: EngineInfo) -> Operated:
     """The operating point, asked for only where there is something nonlinear that has an equivalent at it."""
     devices = [e for e in circuit.elements if isinstance(e, Device)]
-    if engine.available and any(d.behaviour is not None or d.kind in QUANTITIES for d in devices):
+    if engine.available and any(d.behaviour is not None or d.kind == "a" or d.kind in QUANTITIES for d in devices):
         return operate(deck, circuit, engine=engine)
     return Operated(None)
 

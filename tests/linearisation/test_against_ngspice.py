@@ -59,6 +59,19 @@ DECKS = {
     "table between points": "e1 o 0 table {v(vb)} = (0,0) (2,1) (5,7)\nro o 0 1k",
     "table, at corners": "e1 o1 0 table {v(vb)} = (0,0) (3.05,1) (5,7)\ng1 0 o table {v(vb)} (3,0) (4,1m)\nro o 0 1k",
     "table, at its end": "e1 o1 0 table {v(vb)} = (0,0) (2.95,1)\ne2 o 0 table {v(in)} (0,0) (0.5,1)\nro o 0 1k",
+    "code model: gain": "a1 in o ga\n.model ga gain(gain=3 in_offset=0.1)\nro o 0 1k",
+    "code model: summer": "a1 [in vb] o su\n.model su summer(in_gain=[1 2.5] out_gain=-2)\nro o 0 1k",
+    "code model: transfer function": (
+        "rd in d 1k\nre d vb 3k\nrg d 0 1k\na1 %vd(d vb) o tf\nro o 0 1k\n"
+        ".model tf s_xfer(gain=2 num_coeff=[1 3] den_coeff=[1 2 5] int_ic=[0 0])"
+    ),
+    "code model: an op-amp's two poles": (
+        "r1 in m 10k\nr2 m o 47k\na1 %vd(0 m) x tf\nro x o 75\nrl o 0 10k\n"
+        ".model tf s_xfer(gain=1e5 num_coeff=[1] den_coeff=[5e-10 1.59e-2 1] int_ic=[0 0])"
+    ),
+    "code model: of equal orders": (
+        "a1 in o tf\n.model tf s_xfer(num_coeff=[1 0] den_coeff=[1 1] int_ic=[0] denormalized_freq=6283)\nro o 0 1k"
+    ),
     "user functions": ".func sq(x) {x*x*k}\n.param k=2\nb1 o 0 v=sq(v(in,vb))\nro o 0 1k",
 }
 TOLERANCE = 1e-6

@@ -111,6 +111,13 @@ def code_model(card: Card, problems: Problems) -> Maker | None:
     return make
 
 
+def node_words(card: Card) -> list[tuple[str, int, int]]:
+    """The nodes on an XSPICE device's card, in the order of `Device.nodes`: lower case, with ranges of offsets."""
+    words = list(_CONNECTION.finditer(card.text.lower(), card.fields[0].end))[:-1]
+    kinds = _kinds([word.group() for word in words])
+    return [(w.group(), w.start(), w.end()) for w, (_, kind) in zip(words, kinds, strict=True) if kind == "node"]
+
+
 def _kinds(words: list[str]) -> list[tuple[str, str]]:
     """Each word of an XSPICE device's connections with its kind, see `Device.connections`."""
     found: list[tuple[str, str]] = []

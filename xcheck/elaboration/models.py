@@ -45,7 +45,7 @@ def model_words(card: Card) -> dict[str, Field]:
     for field in card.fields:
         head, parenthesis, _ = field.text.partition("(")
         start = field.start + len(head) + 1
-        if parenthesis and field.text.endswith(")") and (not head or head.isalnum()):
+        if parenthesis and field.text.endswith(")") and (not head or head.replace("_", "").isalnum()):
             inner = fields_of(field.text[len(head) + 1 : -1])
             opened += [Field(f.text, f.start + start, f.end + start) for f in inner]
         else:

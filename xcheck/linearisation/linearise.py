@@ -6,6 +6,7 @@ from dataclasses import dataclass, field, replace
 from xcheck.circuit.elements import GROUND, Circuit, Controlled, Device, Element, Instance, Passive, Term
 from xcheck.circuit.point import OperatingPoint
 from xcheck.circuit.trees import Binary, Call
+from xcheck.linearisation.code_models import code_model
 from xcheck.linearisation.gradient import NoSlope, Probe, slope_of
 from xcheck.linearisation.semiconductors import NoEquivalent, equivalent
 from xcheck.linearisation.switches import switch
@@ -109,6 +110,8 @@ class _Frame:
         """The linear elements for a device. Raises NoEquivalent, NoSlope."""
         if device.behaviour is not None:
             return [self._behaving(device)]
+        if device.kind == "a":
+            return list(code_model(device))
         try:
             if device.kind in "sw":
                 amperes = self.point.amperes

@@ -8,6 +8,7 @@ from collections.abc import Callable, Iterable, Mapping
 from dataclasses import replace
 
 from xcheck.circuit.elements import GROUND, Controlled, Device, Element, Passive
+from xcheck.linearisation.code_models import code_model
 from xcheck.linearisation.gradient import NoSlope, Probe, Slope, slope_of
 from xcheck.linearisation.linearise import term_of
 from xcheck.linearisation.semiconductors import NoEquivalent, equivalent
@@ -47,6 +48,8 @@ def nominal(elements: Iterable[Element], volts: Mapping[str, float]) -> tuple[El
 def _linear(device: Device, volts: Mapping[str, float]) -> Iterable[Element]:
     if device.behaviour is not None:
         return [_behaving(device, volts)]
+    if device.kind == "a":
+        return code_model(device)
     if device.kind in "sw":
         a, b = device.nodes[:2]
         return [Passive(device.name, "r", (a, b), 1.0 / DIODE_SIEMENS, replace(device.origin, device=device.name))]

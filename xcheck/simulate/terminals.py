@@ -4,6 +4,7 @@ import re
 from dataclasses import dataclass
 
 from xcheck.deck.cards import Card, Field
+from xcheck.elaboration.devices import node_words
 
 _EXPRESSIONS = frozenset("value vol cur table laplace freq chebyshev".split())
 _POLY = re.compile(r"poly(?:\((\d+)\))?$")
@@ -23,7 +24,7 @@ class Spot:
 def node_spots(card: Card) -> tuple[Spot, ...]:
     """The words of an element's card in order, its nodes first, parenthesised groups opened."""
     if card.kind == "a":
-        return tuple(_connections(card))
+        return tuple(Spot(*word) for word in node_words(card))
     return tuple(spot for field in card.fields[1:] for spot in _opened(field))
 
 
@@ -55,14 +56,3 @@ def _opened(field: Field) -> list[Spot]:
 
 def _words(text: str, offset: int) -> list[Spot]:
     return [Spot(w.group().lower(), offset + w.start(), offset + w.end()) for w in _WORD.finditer(text)]
-
-
-def _connections(card: Card) -> list[Spot]:
-    """The connections of a code model, without brackets, port types and empty places."""
-    spots: list[Spot] = []
-    for field in card.fields[1:-1]:
-        word = field.text.strip("[]()~")
-        if word and not word.startswith("%") and word.lower() != "null":
-            start = field.start + field.text.index(word)
-            spots.append(Spot(word.lower(), start, start + len(word)))
-    return spots
