@@ -7,7 +7,7 @@ from xcheck.finding import Finding, Level
 from xcheck.notation import engineering
 from xcheck.place import Place
 from xcheck.reviewed import Evidence
-from xcheck.simulate.types import Simulation
+from xcheck.simulate.types import MISSING_MODEL, Simulation
 from xcheck.stages.types import Amplifier
 
 MARGIN_VOLT = 0.05
@@ -46,9 +46,14 @@ def operating_point_fails(evidence: Evidence) -> Iterator[Finding]:
 
 
 def simulation_fails(evidence: Evidence) -> Iterator[Finding]:
-    """ngspice is there and the run came to nothing for another reason than the operating point."""
+    """ngspice is there and the run came to nothing, not for want of an operating point, nor of a model that the deck
+    does not define: those are said already."""
     simulation = evidence.simulation
-    if simulation is None or not simulation.engine.available or simulation.failed_step in ("", OPERATING_POINT):
+    if (
+        simulation is None
+        or not simulation.engine.available
+        or simulation.failed_step in ("", OPERATING_POINT, MISSING_MODEL)
+    ):
         return
     place, named = _named_in(evidence, (simulation.failure,))
     measured, ports = len(simulation.values), len(evidence.answers)

@@ -72,6 +72,8 @@ def node_dangling(evidence: Evidence) -> Iterator[Finding]:
     circuit = evidence.circuit
     ends = terminals(circuit)
     on_pins = {node for instance in circuit.instances for _, node in instance.pins}
+    undefined = (e for e in circuit.elements if isinstance(e, Device) and e.kind == "x")
+    on_pins.update(node for element in undefined for node in element.nodes)
     known = declared_ports(evidence) | observed_nodes(evidence) | on_pins
     inside = {a.name for a in evidence.partition.amplifiers}
     outputs = _OpenEnds(evidence)

@@ -17,7 +17,7 @@ from xcheck.simulate.process import WORKER, WorkerEnded, answers_of
 from xcheck.simulate.sanitize import Harmless, harmless
 from xcheck.simulate.size import MOST_ELEMENTS, expanded_size
 from xcheck.simulate.sweeps import Sweeps, sweeps_of
-from xcheck.simulate.types import EngineInfo, Simulation
+from xcheck.simulate.types import MISSING_MODEL, EngineInfo, Simulation
 from xcheck.simulate.written import blocks_of, deck_lines, reviewed_block, unused_mark
 from xcheck.stages.types import Partition, Port, Terminal
 
@@ -57,9 +57,12 @@ def measure(
     ports = {port.subject: port for stage in partition.stages for port in stage.ports}
     sane = harmless(deck.cards)
     fault = engine.reason if not engine.available else why_not(sane, circuit)
-    if fault:
+    missing = "" if fault else undefined_in(circuit)
+    if fault or missing:
+        step = MISSING_MODEL if missing else "load"
+        why = fault or missing
         return Simulation(
-            engine, unmeasured=dict.fromkeys(ports, fault), failure=fault, failed_step="load", left_out=sane.left_out
+            engine, unmeasured=dict.fromkeys(ports, why), failure=why, failed_step=step, left_out=sane.left_out
         )
     written = {subject: as_written(port, circuit, partition.circuit) for subject, port in ports.items()}
     plan = planned(sane.cards, circuit, partition, written)
@@ -108,6 +111,13 @@ def _of_the_model(stand_in: str, node: str, circuit: Circuit) -> Iterator[Termin
             yield from (Terminal(element.name, k) for k, end in enumerate(element.nodes) if end == node)
             if node in getattr(element, "sensing", ()):
                 yield Terminal(element.name, -1)
+
+
+def undefined_in(circuit: Circuit) -> str:
+    """Why a deck with instances of undefined subcircuits is not handed to ngspice, '' where there are none."""
+    names = dict.fromkeys(e.model for e in circuit.elements if isinstance(e, Device) and e.reason == "undefined")
+    listed = ", ".join(f"`{name}`" for name in list(names)[:3])
+    return f"the deck does not define {listed}, so ngspice cannot run it" if names else ""
 
 
 def why_not(sane: Harmless, circuit: Circuit) -> str:

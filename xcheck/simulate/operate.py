@@ -10,7 +10,7 @@ from xcheck.circuit.point import OperatingPoint
 from xcheck.deck.cards import Deck
 from xcheck.simulate.cuts import CutWriter, NoCut, Terminals
 from xcheck.simulate.engine import find_engine
-from xcheck.simulate.measure import MEMORY_LIMIT, TIME_LIMIT, why_not
+from xcheck.simulate.measure import MEMORY_LIMIT, TIME_LIMIT, undefined_in, why_not
 from xcheck.simulate.names import circuit_name, engine_names
 from xcheck.simulate.process import WORKER, WorkerEnded, answers_of
 from xcheck.simulate.sanitize import harmless
@@ -56,6 +56,7 @@ def operate(
     fault = engine.reason if not engine.available else why_not(sane, circuit)
     if circuit.boundary:
         fault = "a subcircuit by itself has no operating point"
+    fault = fault or undefined_in(circuit)
     if fault:
         return Operated(None, fault, "load")
     writer = CutWriter(Terminals(circuit), unused_mark(sane.cards))

@@ -5,6 +5,9 @@ from dataclasses import dataclass, field
 
 from xcheck.circuit.arrays import Complex
 
+MISSING_MODEL = "missing model"
+"""The step at which a deck fails whose models are not all there."""
+
 
 @dataclass(frozen=True, slots=True)
 class EngineInfo:
@@ -26,7 +29,7 @@ class Simulation:
     values: ohm by port subject, shape (F,) on the grid that was asked for; unmeasured: reason by port
     subject; operating_point: volt by flat node; currents: ampere by flat name of a voltage source, into its
     first node; failure: what failed as a whole, in ngspice's own words, '' where nothing did; failed_step:
-    'load', 'operating point', 'ac', 'time limit', 'memory limit', 'crash' or ''; messages: ngspice's
+    'missing model', 'load', 'operating point', 'ac', 'time limit', 'memory limit', 'crash' or ''; messages: ngspice's
     warnings and notes; left_out: cards that were not handed to ngspice, in words; taken_from: the result file that
     the values come from, '' where ngspice was run; doubts: what speaks for another deck behind that file.
     """

@@ -56,6 +56,8 @@ def _sections(device: Device, part: Part, levels: SupplyLevels) -> tuple[list[Am
     if _fits(usual, levels):
         return [_amplifier(device, part, usual, "the usual order in+ in- v+ v- out")], ""
     fitting = [roles for order in OTHER_ORDERS if _fits(roles := dict(zip(order, nodes, strict=True)), levels)]
+    # inputs exchanged fit the supplies as well: then the one with its output fed back to the inverting input
+    fitting = [r for r in fitting if levels.tied(r["out"], r["in-"])] or fitting
     if len(fitting) == 1:
         return [_amplifier(device, part, fitting[0], "the order that fits the supplies")], ""
     return [
