@@ -17,8 +17,10 @@ DECKS = sorted([*ROOT.glob("netlists/**/*.cir"), *ROOT.glob("tests/decks/*.cir")
 
 def content(element: Element) -> tuple[object, ...]:
     """All of an element but where it comes from."""
-    names = [n for n in element.__dataclass_fields__ if n != "origin"]
-    return (type(element).__name__, *(getattr(element, n) for n in names))
+    names = [n for n in element.__dataclass_fields__ if n not in ("origin", "definition")]
+    model = getattr(element, "definition", None)
+    told = None if model is None else (model.name, model.type, model.values, model.text)
+    return (type(element).__name__, told, *(getattr(element, n) for n in names))
 
 
 def circuit(text: str) -> list[tuple[object, ...]]:
